@@ -160,6 +160,16 @@ struct Site {
   SourceSettings source;
   std::string text;              ///< the file as read, for the settings history
 
+  /// The lines between which a voltage counts as in band: the regulator's, or sag and swell thresholds without one.
+  struct Band {
+    double low_v;
+    double high_v;
+    [[nodiscard]] bool holds(double volts) const { return volts >= low_v && volts <= high_v; }
+  };
+  [[nodiscard]] Band band() const {
+    if (regulator) return {regulator->band_low_v, regulator->band_high_v};
+    return {events.sag_pct / 100.0 * nominal_v, events.swell_pct / 100.0 * nominal_v};
+  }
   [[nodiscard]] bool has(Side side) const {
     for (const auto& c : channels) {
       if (c.channel.side == side) return true;
