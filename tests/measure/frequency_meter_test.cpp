@@ -13,9 +13,10 @@ namespace {
 
 using namespace testing;
 
-std::vector<storage::Frequency> frequencies(const Signal& signal, double seconds, double nominal_hz = 50.0) {
+std::vector<storage::Frequency> frequencies(const Signal& signal, double seconds, double nominal_hz = 50.0,
+                                            UtcNs begin = {0}) {
   return records_of<storage::Frequency>(
-      metered(site_of(kOneInput, 230.0, nominal_hz), {sampled(signal, seconds)}, kRate, UtcNs{0}));
+      metered(site_of(kOneInput, 230.0, nominal_hz), {sampled(signal, seconds)}, kRate, begin));
 }
 
 struct Steady {
@@ -40,10 +41,13 @@ TEST(FrequencyMeter, SteadyFrequenciesAreWithinTwoMillihertzOverTheRange) {
 // Cycles that straddle the 10-s tick are left out (5.1, from memory; counts computed). First upward crossing
 // 0.3 cycle after the tick.
 TEST(FrequencyMeter, OnlyWholeCyclesWithinTheTenSecondsCount) {
-  const auto values = frequencies(sine(230.0, 49.9, [](double) { return 1.0; }, -0.3 * 360.0), 21.0);
-  ASSERT_GE(values.size(), 2U);
-  EXPECT_EQ(values[0].cycles, 498);
-  EXPECT_NEAR(values[0].hz, 49.9, 1e-4);
+  // The tick comes one second, 49.9 cycles, after the first sample.
+  const auto values =
+      frequencies(sine(230.0, 49.9, [](double) { return 1.0; }, -0.2 * 360.0), 22.0, 50.0, UtcNs{9 * kNsPerSecond});
+  ASSERT_GE(values.size(), 3U);
+  EXPECT_EQ(values[1].begin.value, 10 * kNsPerSecond);
+  EXPECT_EQ(values[1].cycles, 498);
+  EXPECT_NEAR(values[1].hz, 49.9, 1e-4);
 }
 
 TEST(FrequencyMeter, ASlowRampGivesTheMeanOfEachTenSeconds) {
