@@ -6,7 +6,12 @@ namespace tramline::config {
 
 std::string Fault::text(std::string_view file_name) const {
   std::string line(file_name);
-  if (at.line > 0) line += ":" + std::to_string(at.line) + ":" + std::to_string(at.column);
+  if (at.line > 0) {
+    line += ':';
+    line += std::to_string(at.line);
+    line += ':';
+    line += std::to_string(at.column);
+  }
   line += ": ";
   if (!path.empty()) line += path + " ";
   line += what;
@@ -20,7 +25,8 @@ std::string shown(std::string_view text) {
   if (end > kMost) {
     end = kMost;
     // Not in the middle of a character: its further bytes are 10xxxxxx.
-    while (end > 0 && (static_cast<unsigned char>(text[end]) & 0xC0U) == 0x80U) --end;
+    while (end > 0 && (static_cast<unsigned char>(text[end]) & 0xC0U) == 0x80U)
+      --end;
   }
   std::string line(text.substr(0, end));
   for (char& c : line) {

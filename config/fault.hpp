@@ -7,7 +7,8 @@
 
 namespace tramline::config {
 
-/// A place in a text file, counted from 1; columns count characters, as an editor does. Line 0: the file as a whole.
+/// A place in a text file, counted from 1; columns count characters, as an editor does. Line 0: the file as a
+/// whole.
 struct Position {
   int line = 0;
   int column = 0;
@@ -16,7 +17,8 @@ struct Position {
 /// One thing that is wrong in a site file, and what would be right.
 struct Fault {
   Position at;
-  std::string path;     ///< the key, such as `events.sag_pct` or `channels[2].scale` (list items count from 1); or empty
+  std::string
+      path;  ///< the key, such as `events.sag_pct` or `channels[2].scale` (list items count from 1); or empty
   std::string what;     ///< reads on from the path: "is 101"
   std::string allowed;  ///< "a sag threshold lies between 1 and 100 percent of nominal_v"
 

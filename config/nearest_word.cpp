@@ -9,12 +9,15 @@ namespace {
 
 constexpr std::size_t kLongest = 64;
 
-char lower(char c) { return c >= 'A' && c <= 'Z' ? static_cast<char>(c - 'A' + 'a') : c; }
+char lower(char c) {
+  return c >= 'A' && c <= 'Z' ? static_cast<char>(c - 'A' + 'a') : c;
+}
 
 /// Optimal string alignment distance; both at most kLongest.
 std::size_t distance(std::string_view a, std::string_view b) {
   std::array<std::array<std::size_t, kLongest + 1>, 3> rows{};
-  for (std::size_t j = 0; j <= b.size(); ++j) rows[0][j] = j;
+  for (std::size_t j = 0; j <= b.size(); ++j)
+    rows[0][j] = j;
   for (std::size_t i = 1; i <= a.size(); ++i) {
     auto& row = rows[i % 3];
     const auto& above = rows[(i - 1) % 3];

@@ -41,7 +41,8 @@ std::size_t utf8_length(std::string_view text) {
   return follows(2) && follows(3) && !overlong && !beyond ? 4 : 0;
 }
 
-/// Looks for what YAML readers answer with a riddle, or not at all: wrong encodings, control characters, tabs.
+/// Looks for what YAML readers answer with a riddle, or not at all: wrong encodings, control characters,
+/// tabs.
 void check_characters(std::string_view text, Findings& findings) {
   Position at{1, 1};
   bool indenting = true;
@@ -96,10 +97,26 @@ Position position(const YAML::Mark& mark) {
   return mark.is_null() ? Position{} : Position{mark.line + 1, mark.column + 1};
 }
 
+/// Whether the quoted scalar at `begin` has its closing quote. yaml-cpp takes the end of the file for one.
+bool quote_is_closed(std::string_view text, std::size_t begin) {
+  if (begin >= text.size() || (text[begin] != '"' && text[begin] != '\'')) return true;  // a block scalar
+  const char quote = text[begin];
+  for (std::size_t i = begin + 1; i < text.size(); ++i) {
+    if (text[i] == '\\' && quote == '"') {
+      ++i;
+    } else if (text[i] == quote) {
+      if (quote == '"' || i + 1 >= text.size() || text[i + 1] != quote) return true;
+      ++i;  // '' within single quotes is one quote
+    }
+  }
+  return false;
+}
+
 class TreeBuilder : public YAML::EventHandler {
  public:
   void OnDocumentStart(const YAML::Mark& mark) override {
-    if (++documents_ > 1) refuse(position(mark), "a second document begins here", "a site file is one document");
+    if (++documents_ > 1)
+      refuse(position(mark), "a second document begins here", "a site file is one document");
   }
   void OnDocumentEnd() override {}
   void OnNull(const YAML::Mark& mark, YAML::anchor_t anchor) override {
@@ -121,6 +138,11 @@ class TreeBuilder : public YAML::EventHandler {
   void OnSequenceEnd() override { close(); }
   void OnMapEnd() override { close(); }
 
+  /// `text` is what is being parsed.
+  explicit TreeBuilder(std::string_view text) : text_(text) {
+    root_.at = {1, 1};  // stays so if the file is empty
+  }
+
   [[nodiscard]] YamlNode take_root() { return std::move(root_); }
 
   /// The innermost bracket or brace that is still open; line 0 if none is.
@@ -139,7 +161,8 @@ class TreeBuilder : public YAML::EventHandler {
   };
 
   [[noreturn]] static void refuse_anchor(Position at) {
-    refuse(at, "an anchor (&) or alias (*) stands here", "write the value out, or in quotes if it begins with & or *");
+    refuse(at, "an anchor (&) or alias (*) stands here",
+           "write the value out, or in quotes if it begins with & or *");
   }
 
   YamlNode begin(YamlNode::Kind kind, const YAML::Mark& mark, YAML::anchor_t anchor, const std::string& tag) {
@@ -149,7 +172,11 @@ class TreeBuilder : public YAML::EventHandler {
       refuse(at, "the tag " + shown(tag) + " stands here", "write the value without a tag");
     }
     if (++values_ > kMostValues) {
-      refuse(at, "the file holds more than " + std::to_string(kMostValues) + " values", "a site file is far smaller");
+      refuse(at, "the file holds more than " + std::to_string(kMostValues) + " values",
+             "a site file is far smaller");
+    }
+    if (tag == "!" && mark.pos >= 0 && !quote_is_closed(text_, static_cast<std::size_t>(mark.pos))) {
+      refuse(at, "this quote is never closed", "close it with the same sign");
     }
     YamlNode node;
     node.kind = kind;
@@ -199,9 +226,10 @@ class TreeBuilder : public YAML::EventHandler {
     level.node.items.push_back(std::move(node));
   }
 
+  std::string_view text_;
   int documents_ = 0;
   std::size_t values_ = 0;
-  YamlNode root_{.at = {1, 1}};
+  YamlNode root_;
   std::vector<Level> open_;
 };
 
@@ -209,8 +237,8 @@ class TreeBuilder : public YAML::EventHandler {
 
 std::optional<YamlNode> read_yaml(std::string_view text, Findings& findings) {
   if (text.size() > kLargestFileBytes) {
-    findings.fault({}, "", "the file has " + std::to_string(text.size()) + " bytes",
-                   "a site file has at most " + std::to_string(kLargestFileBytes) + " bytes");
+    findings.fault({}, "", "the file is larger than " + std::to_string(kLargestFileBytes) + " bytes",
+                   "a site file is far smaller");
     return std::nullopt;
   }
   text = without_byte_order_mark(text);
@@ -218,7 +246,7 @@ std::optional<YamlNode> read_yaml(std::string_view text, Findings& findings) {
   check_characters(text, findings);
   if (findings.faults.size() > before) return std::nullopt;
 
-  TreeBuilder builder;
+  TreeBuilder builder(text);
   try {
     std::istringstream stream{std::string(text)};
     YAML::Parser parser(stream);
@@ -228,10 +256,14 @@ std::optional<YamlNode> read_yaml(std::string_view text, Findings& findings) {
     findings.faults.push_back(refused.fault);
     return std::nullopt;
   } catch (const YAML::Exception& syntax) {
-    const bool unclosed =
+    const bool in_brackets =
         syntax.msg == YAML::ErrorMsg::END_OF_SEQ_FLOW || syntax.msg == YAML::ErrorMsg::END_OF_MAP_FLOW;
-    if (unclosed && builder.open_bracket().line > 0) {
-      findings.fault(builder.open_bracket(), "", "this bracket is never closed", "close it with ] or }");
+    const Position bracket = builder.open_bracket();
+    if (in_brackets && bracket.line > 0) {
+      // Where yaml-cpp gave up may be far from the slip, and at the end of the file it is 1:1.
+      const int line = std::max(bracket.line, position(syntax.mark).line);
+      findings.fault(bracket, "", "what this bracket opens breaks off in line " + std::to_string(line),
+                     "close it with ] or }, and part its items by commas");
     } else {
       findings.fault(position(syntax.mark), "", "this is not YAML: " + shown(syntax.msg),
                      "look at colons, quotes, brackets and indentation here and in the line above");
@@ -261,7 +293,8 @@ void count_characters(std::string_view text, std::vector<Fault>& faults) {
     while (offset < text.size() && bytes < fault.at.column) {
       ++offset;
       ++bytes;
-      const bool character_begins = offset >= text.size() || (static_cast<unsigned char>(text[offset]) & 0xC0U) != 0x80U;
+      const bool character_begins =
+          offset >= text.size() || (static_cast<unsigned char>(text[offset]) & 0xC0U) != 0x80U;
       if (character_begins) ++characters;
     }
     fault.at.column = characters;

@@ -161,7 +161,19 @@ struct Correction {
 
 // ---- what was measured, and how ----------------------------------------------------------------------
 
-/// A stretch of measuring without a hole. A `session` is one start of the daemon or one import.
+/// One start of the daemon on its source, or one import: what all records up to its end belong to.
+struct SessionBegin {
+  std::string program;  ///< "tramlined 0.1.0"
+  std::string source;   ///< what the source says of itself
+  double rate_hz = 0.0;
+  bool dated = true;    ///< false: times count from the recording's begin
+  UtcNs begin;          ///< of sample 0
+};
+struct SessionEnd {
+  std::string why;
+};
+
+/// A stretch of measuring without a hole.
 struct CoverageBegin {
   SampleIndex begin_sample;
   UtcNs begin;
@@ -211,7 +223,7 @@ struct Loss {
   std::int64_t count = 0;
 };
 
-using Record = std::variant<Event, Aggregate, Frequency, RegulatorInterval, Correction, CoverageBegin, CoverageProgress,
+using Record = std::variant<SessionBegin, SessionEnd, Event, Aggregate, Frequency, RegulatorInterval, Correction, CoverageBegin, CoverageProgress,
                             CoverageEnd, Waveform, ClockChange, SettingsInForce, Loss>;
 
 }  // namespace tramline::storage

@@ -1,0 +1,13 @@
+#pragma once
+
+#include "config/map_reader.hpp"
+#include "config/site.hpp"
+#include "config/site_sections.hpp"
+
+namespace tramline::config {
+
+/// Reads the section `source`: its `kind`, then the simulator's keys or a recording's. After all other
+/// sections, which it is checked against.
+void read_source(MapReader& map, Site& site, SoundFigures sound);
+
+}  // namespace tramline::config

@@ -1,0 +1,41 @@
+#pragma once
+
+#include <cstdint>
+#include <optional>
+#include <string>
+#include <vector>
+
+#include "config/result.hpp"
+#include "config/site.hpp"
+#include "storage/records.hpp"
+
+namespace tramline::tools {
+
+/// A stretch of measuring without a hole.
+struct Measured {
+  UtcNs begin;
+  UtcNs end;
+  std::int64_t measured_ns = 0;
+  std::string why_ended;  ///< empty while it goes on
+};
+
+/// What the verdict is drawn from: the records of the period asked about.
+struct Evidence {
+  config::Site site;
+  std::string program;      ///< what wrote the logbook
+  std::string source;       ///< where the samples came from
+  bool dated = true;
+  std::optional<UtcNs> from;  ///< as asked; absent: from the first record
+  std::optional<UtcNs> to;
+  std::vector<Measured> coverage;
+  std::vector<storage::RegulatorInterval> intervals;
+  std::vector<storage::Aggregate> ten_minutes;
+  std::vector<storage::Event> events;
+  std::int64_t records_lost = 0;
+};
+
+/// Reads the evidence for a period, given as people write times ("" for no limit), from the logbook at `path`. The site is
+/// the one in force at the end of the period.
+[[nodiscard]] Result<Evidence> gather(const std::string& path, const std::string& from, const std::string& to);
+
+}  // namespace tramline::tools

@@ -1,0 +1,22 @@
+#pragma once
+
+#include <string>
+#include <string_view>
+
+#include "config/units.hpp"
+#include "storage/records.hpp"
+
+/// The words in which the tool speaks of sides, events and origins, in one place.
+namespace tramline::tools {
+
+[[nodiscard]] std::string_view name_of(storage::EventKind kind);  ///< "sag", "out of band"
+[[nodiscard]] std::string_view name_of(storage::Origin origin);
+[[nodiscard]] std::string_view name_of(storage::EventEnd end);
+using tramline::name_of;
+
+[[nodiscard]] std::string side_text(Side side);                   ///< "supply (input)"
+[[nodiscard]] std::string volts_text(double volts);               ///< "257.4 V"; "not measured"
+[[nodiscard]] std::string share_text(double part, double whole);  ///< "98.3 %"; "not measured" of nothing
+[[nodiscard]] std::string phases_text(std::uint8_t phases);       ///< "L1 L3"
+
+}  // namespace tramline::tools
