@@ -34,6 +34,7 @@ struct RegulatorSettings {
   std::optional<double> speed_v_per_s;  ///< output volts a second while correcting, at nominal input
   double response_s = 0.05;             ///< sense delay before the motor starts
   double grace_s = 1.0;                 ///< out of band for longer than this is an excursion of its own
+  double tolerance_pct = 0.5;           ///< so little beyond the band, in percent of nominal, is no excursion
 };
 
 /// Thresholds in percent of the nominal voltage; defaults are those of IEC 61000-4-30 practice.
@@ -165,7 +166,12 @@ struct Site {
     double low_v;
     double high_v;
     [[nodiscard]] bool holds(double volts) const { return volts >= low_v && volts <= high_v; }
+    [[nodiscard]] Band widened(double by_v) const { return {low_v - by_v, high_v + by_v}; }
   };
+  /// The band with the regulator's tolerance: what lies outside is an excursion, if it lasts.
+  [[nodiscard]] Band tolerated_band() const {
+    return regulator ? band().widened(regulator->tolerance_pct / 100.0 * nominal_v) : band();
+  }
   [[nodiscard]] Band band() const {
     if (regulator) return {regulator->band_low_v, regulator->band_high_v};
     return {events.sag_pct / 100.0 * nominal_v, events.swell_pct / 100.0 * nominal_v};

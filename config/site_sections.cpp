@@ -198,6 +198,7 @@ bool read_regulator(MapReader& map, Site& site, SoundFigures sound) {
              {"the correction speed", 0.1, 10'000.0, "V/s of output"}, absent_means("not known"));
   map.number("response_s", regulator.response_s, {"the response time", 0.0, 60.0, "s"});
   map.number("grace_s", regulator.grace_s, {"the grace", 0.0, 3600.0, "s"});
+  map.number("tolerance_pct", regulator.tolerance_pct, {"the tolerance", 0.0, 5.0, "percent of nominal_v"});
   map.refuse_other_keys();
 
   const auto one_of_two = [&map](std::string_view first, std::string_view second, const std::string& what) {

@@ -42,7 +42,7 @@ Error wrong_option(std::string option, std::string what, std::string remedy) {
 }
 
 /// `text` as a YAML string: JSON's quoting is also YAML's.
-std::string quoted(const std::string& text) {
+std::string yaml_string(const std::string& text) {
   return nlohmann::json(text).dump(-1, ' ', false, nlohmann::json::error_handler_t::replace);
 }
 
@@ -69,8 +69,8 @@ Result<std::string> site_text(const Request& request) {
       column.resize(star);
     }
     three_phase = three_phase || phase != "L1";
-    channels += fmt::format("  - {{side: {}, phase: {}", quoted(text.substr(0, dot)), quoted(phase));
-    if (!column.empty()) channels += ", source_channel: " + quoted(column);
+    channels += fmt::format("  - {{side: {}, phase: {}", yaml_string(text.substr(0, dot)), yaml_string(phase));
+    if (!column.empty()) channels += ", source_channel: " + yaml_string(column);
     if (!scale.empty()) channels += ", scale: " + scale;
     channels += "}\n";
   }
@@ -78,8 +78,8 @@ Result<std::string> site_text(const Request& request) {
   return fmt::format(
       "# Made from the options of an import.\nsite:\n  name: {}\n  zone: UTC\n  nominal_v: {}\n  frequency_hz: {}\n  phases: {}\n"
       "channels:\n{}logbook:\n  path: {}\nsource:\n  kind: recording\n  path: {}\n",
-      quoted("recording " + name), request.nominal_v, request.frequency_hz, three_phase ? 3 : 1, channels, quoted(request.into),
-      quoted(request.recording));
+      yaml_string("recording " + name), request.nominal_v, request.frequency_hz, three_phase ? 3 : 1, channels, yaml_string(request.into),
+      yaml_string(request.recording));
 }
 
 /// The site to measure by, with the options put into it. Prints the faults of a site file itself.

@@ -135,7 +135,7 @@ void put_sides(const Evidence& evidence, const VerdictFigures& f, std::string& o
     return side.measured ? share_text(static_cast<double>(part), static_cast<double>(side.half_cycles)) : std::string("not measured");
   };
   const auto row = [&](std::string_view what, const std::string& input, const std::string& output) {
-    fmt::format_to(std::back_inserter(out), "  {:<34}{:<26}{}\n", what, input, output);
+    fmt::format_to(std::back_inserter(out), "  {:<38}{:<26}{}\n", what, input, output);
   };
   row("", side_text(Side::input), side_text(Side::output));
   row("in band, share of half cycles", share(f.input, f.input.in_band), share(f.output, f.output.in_band));
@@ -208,20 +208,21 @@ std::string verdict_text(const Evidence& evidence, const VerdictFigures& figures
   out += when(figures.from, evidence) + " to " + when(figures.to, evidence) + "\n\n" + indented(sentence(evidence, figures), 0) + "\n";
   put_sides(evidence, figures, out);
   if (figures.answer == Answer::not_held) {
-    fmt::format_to(std::back_inserter(out), "\n  {:<34}{:<10}in all\n", "excursions of the output by origin", "times");
+    fmt::format_to(std::back_inserter(out), "\n  {:<38}{:<10}in all\n", "excursions of the output, by origin", "times");
     for (const storage::Origin origin : {storage::Origin::supply, storage::Origin::regulator, storage::Origin::undecided}) {
       const OfOrigin& of = figures.by_origin[static_cast<std::size_t>(origin)];
-      fmt::format_to(std::back_inserter(out), "  {:<34}{:<10}{}\n", name_of(origin), of.times, of.times > 0 ? format_duration(of.total_ns) : "");
+      fmt::format_to(std::back_inserter(out), "  {:<38}{:<10}{}\n", name_of(origin), of.times, of.times > 0 ? format_duration(of.total_ns) : "");
     }
     put_excursion("Longest", *figures.longest, evidence, out);
     const bool same = figures.worst->begin_sample == figures.longest->begin_sample;
     if (!same) put_excursion("Worst", *figures.worst, evidence, out);
   }
   if (figures.pairs > 0) {
-    fmt::format_to(std::back_inserter(out), "\nThe servo made {} corrections ({} of them turned back within 10 s), {:.2f} of ratio in all; ", figures.corrections,
-                   figures.reversals, figures.travel);
-    fmt::format_to(std::back_inserter(out), "the supply was within what it can correct for {} of the half cycles with a ratio.\n",
-                   share_text(static_cast<double>(figures.correctable), static_cast<double>(figures.pairs)));
+    out += "\n" + indented(fmt::format("The servo made {} corrections ({} of them turned back within 10 s), {:.2f} of ratio in all; the "
+                                     "supply was within what it can correct for {} of the half cycles with a ratio.",
+                                     figures.corrections, figures.reversals, figures.travel,
+                                     share_text(static_cast<double>(figures.correctable), static_cast<double>(figures.pairs))),
+                         0);
   }
   put_coverage(evidence, figures, out);
   return out;

@@ -9,6 +9,7 @@ namespace {
 using What = config::ScriptedHappening::What;
 
 constexpr double kLatchWithin = 0.002;  // of ratio
+constexpr double kLeastMotor_v = 50.0;  // the mains feeds the motor; lowest usable input, common practice, no source
 
 bool concerns_servo(What what) {
   return what != What::sag && what != What::swell && what != What::interruption && what != What::level;
@@ -74,11 +75,11 @@ void ServoModel::advance(double input_v, double step_s) {
   const double filter_s = servo_.sense_filter_s * faults.filter;
   const double output_v = gain_ * input_v;
   sensed_v_ += (output_v - sensed_v_) * (filter_s > 0.0 ? 1.0 - std::exp(-step_s / filter_s) : 1.0);
-  move(faults, step_s);
+  move(faults, input_v, step_s);
   t_s_ += step_s;
 }
 
-void ServoModel::move(const Faults& faults, double step_s) {
+void ServoModel::move(const Faults& faults, double input_v, double step_s) {
   const int wanted = sensed_v_ < servo_.comparator_low_v ? 1 : sensed_v_ > servo_.comparator_high_v ? -1 : 0;
   if (wanted != 0) {
     direction_ = faults.reversed ? -wanted : wanted;
@@ -88,7 +89,7 @@ void ServoModel::move(const Faults& faults, double step_s) {
   } else {
     direction_ = 0;
   }
-  if (faults.stuck) return;
+  if (faults.stuck || input_v < kLeastMotor_v) return;
   const double pace = servo_.speed_v_per_s / nominal_v_ * faults.speed;
   ratio_ = std::clamp(ratio_ + direction_ * pace * step_s, servo_.ratio_min, servo_.ratio_max);
 }

@@ -35,7 +35,7 @@ class ServoModel {
     double filter = 1.0;
   };
   [[nodiscard]] Faults faults_now();
-  void move(const Faults& faults, double step_s);
+  void move(const Faults& faults, double input_v, double step_s);
   void change_load(double step_s);
 
   config::ServoSettings servo_;

@@ -11,7 +11,7 @@ constexpr std::int64_t kBackFor_ns = 200 * kNsPerMillisecond;
 
 ExcursionDetector::ExcursionDetector(Phase phase, const config::Site& site)
     : site_(site),
-      band_(site.band()),
+      band_(site.tolerated_band()),
       grace_ns_(site.regulator ? std::llround(site.regulator->grace_s * 1e9) : 0),
       sag_v_(site.events.sag_pct / 100.0 * site.nominal_v),
       swell_v_(site.events.swell_pct / 100.0 * site.nominal_v) {
@@ -58,7 +58,7 @@ void ExcursionDetector::begin(const HalfCyclePair& pair) {
   event_.begin_sample = {std::llround(pair.at)};
   event_.begin = pair.begin;
   event_.begin_window_end = pair.begin + pair.window_ns;
-  event_.threshold_v = pair.output_v < band_.low_v ? band_.low_v : band_.high_v;
+  event_.threshold_v = pair.output_v < band_.low_v ? site_.band().low_v : site_.band().high_v;
   event_.end_reason = storage::EventEnd::open;
 }
 

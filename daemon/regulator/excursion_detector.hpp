@@ -12,8 +12,8 @@ namespace tramline::regulator {
 
 /// Excursions of one phase of the output from the regulator's band.
 ///
-/// A servo is expected to let the output touch the edge of its band and to bring it back; so an excursion counts only once
-/// it has lasted longer than the regulator's grace, or at once if it goes past a sag, swell or interruption threshold. It
+/// A servo is expected to let the output touch the edge of its band and to bring it back; so the band is taken with the
+/// regulator's tolerance, and an excursion counts only once it has lasted longer than the regulator's grace, or at once if it goes past a sag, swell or interruption threshold. It
 /// ends when the output has been in band for 0.2 s without a break, and its end is the begin of that stretch.
 /// One phase, one thread.
 class ExcursionDetector {
@@ -27,6 +27,8 @@ class ExcursionDetector {
   /// Measuring has a hole or its end here: closes what is open.
   [[nodiscard]] std::optional<storage::Event> close(storage::EventEnd reason);
 
+  /// Whether the output is outside the band, or has not yet been back in it for long enough.
+  [[nodiscard]] bool under_way() const { return out_; }
   /// Whether an excursion that counts is under way.
   [[nodiscard]] bool open() const { return counted_; }
 

@@ -67,7 +67,7 @@ std::string shares(const ExcursionFigures& figures) {
 }  // namespace
 
 void ExcursionFigures::take(const HalfCyclePair& pair, const config::Site& site, bool ideal_in_band) {
-  const config::Site::Band band = site.band();
+  const config::Site::Band band = site.tolerated_band();
   input_low_v = std::fmin(input_low_v, pair.input_v);
   input_high_v = std::fmax(input_high_v, pair.input_v);
   ratio_low = std::fmin(ratio_low, pair.ratio);

@@ -10,10 +10,10 @@ IdealServo::IdealServo(const config::RegulatorSettings& settings, double nominal
   if (settings.speed_v_per_s) ratio_a_second_ = *settings.speed_v_per_s / nominal_v;
 }
 
-double IdealServo::follow(const HalfCyclePair& pair, bool real_output_in_band) {
+double IdealServo::follow(const HalfCyclePair& pair, bool excursion) {
   const double step_s = last_ns_ ? static_cast<double>(pair.elapsed_ns - *last_ns_) / 1e9 : 0.0;
   last_ns_ = pair.elapsed_ns;
-  if (real_output_in_band && !std::isnan(pair.ratio)) {
+  if (!excursion && !std::isnan(pair.ratio)) {
     ratio_ = pair.ratio;
     out_ = false;
     return pair.output_v;
@@ -22,10 +22,9 @@ double IdealServo::follow(const HalfCyclePair& pair, bool real_output_in_band) {
     out_ = true;
     out_since_ns_ = pair.elapsed_ns;
   }
+  if (std::isnan(pair.ratio)) return ratio_ * pair.input_v;
   const bool responding = static_cast<double>(pair.elapsed_ns - out_since_ns_) / 1e9 >= settings_.response_s;
-  const double needed = pair.input_v > 0.0
-                            ? std::clamp(settings_.target_v / pair.input_v, settings_.ratio_min, settings_.ratio_max)
-                            : settings_.ratio_max;
+  const double needed = std::clamp(settings_.target_v / pair.input_v, settings_.ratio_min, settings_.ratio_max);
   if (!ratio_a_second_) {
     ratio_ = needed;
   } else if (responding) {

@@ -23,7 +23,7 @@ RegulatorWatch::PhaseWatch::PhaseWatch(Phase of, const config::Site& site)
 }
 
 RegulatorWatch::RegulatorWatch(const config::Site& site)
-    : site_(site), band_(site.band()), both_sides_(site.has(Side::input) && site.has(Side::output)) {
+    : site_(site), band_(site.tolerated_band()), both_sides_(site.has(Side::input) && site.has(Side::output)) {
   for (const auto& settings : site.channels) {
     const Phase phase = settings.channel.phase;
     const bool known = std::any_of(phases_.begin(), phases_.end(), [&](const PhaseWatch& p) { return p.phase == phase; });
@@ -62,9 +62,11 @@ void RegulatorWatch::take(const HalfCyclePair& pair, PhaseWatch& phase, std::vec
   if (phase.corrections) give_out(phase.corrections->take(pair), phase, out);
   if (std::isnan(pair.output_v)) return;
 
-  const bool in_band = band_.holds(pair.output_v);
   bool ideal_in_band = false;
-  if (phase.ideal && !std::isnan(pair.input_v)) ideal_in_band = band_.holds(phase.ideal->follow(pair, in_band));
+  if (phase.ideal && !std::isnan(pair.input_v)) {
+    const bool excursion = phase.excursions.under_way() || !band_.holds(pair.output_v);
+    ideal_in_band = band_.holds(phase.ideal->follow(pair, excursion));
+  }
   if (phase.ideal) {
     if (auto event = phase.excursions.take(pair, ideal_in_band)) {
       event->clock = clock_;
