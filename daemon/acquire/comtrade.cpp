@@ -85,8 +85,10 @@ Result<bool> DataReader::next_text(DataRow& row) {
   row.analog.resize(config_.analog.size());
   for (std::size_t i = 0; i < row.analog.size(); ++i) {
     double& value = row.analog[i];
-    // A missing value is an empty field (2013) or 99999 (1999); from memory.
-    if (!parse_number(fields_[2 + i], value) || (config_.revision < 2013 && value == 99999.0)) value = std::nan("");
+    // A missing value is an empty field (2013) or 99999 (1999, and later files too where no raw value may be so large);
+    // from memory.
+    const bool may_be_99999 = config_.revision >= 2013 && config_.analog[i].raw_max >= 99999.0;
+    if (!parse_number(fields_[2 + i], value) || (value == 99999.0 && !may_be_99999)) value = std::nan("");
   }
   return true;
 }

@@ -24,6 +24,7 @@ struct ComtradeConfig {
     double b = 0.0;
     double primary = 1.0;
     double secondary = 1.0;
+    double raw_max = 0.0;    ///< largest raw value, as stated
     bool is_primary = true;  ///< the side that a * raw + b gives
   };
   struct Section {

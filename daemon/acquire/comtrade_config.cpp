@@ -126,6 +126,7 @@ Status read_channels(ConfigLines& in, ComtradeConfig& config) {
     analog.unit = displayable(in.field(4));
     if (!parse_number(in.field(5), analog.a)) return in.error("the multiplier of channel " + analog.name + " is no number", "the sixth field is a");
     if (!in.field(6).empty() && !parse_number(in.field(6), analog.b)) return in.error("the offset of channel " + analog.name + " is no number", "the seventh field is b");
+    if (!parse_number(in.field(9), analog.raw_max)) analog.raw_max = 0.0;
     if (config.revision == 1991) continue;
     if (!in.field(10).empty() && !parse_number(in.field(10), analog.primary)) return in.error("the primary factor of channel " + analog.name + " is no number", "");
     if (!in.field(11).empty() && !parse_number(in.field(11), analog.secondary)) return in.error("the secondary factor of channel " + analog.name + " is no number", "");

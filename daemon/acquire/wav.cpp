@@ -204,7 +204,7 @@ class WavSource : public Source {
     truncated_ = left_ && got.value() < bytes;
     if (left_) *left_ -= static_cast<std::int64_t>(got.value());
     held_ = got.value() / format_.frame_bytes;
-    torn_ = got.value() % format_.frame_bytes;
+    if (got.value() > 0) torn_ = got.value() % format_.frame_bytes;
     used_ = 0;
     return held_ > 0;
   }

@@ -1,6 +1,8 @@
 #include "daemon/regulator/excursion_figures.hpp"
 
+#include <algorithm>
 #include <cmath>
+#include <cstdio>
 
 #include "config/time_text.hpp"
 
