@@ -69,7 +69,7 @@ TEST(Verdict, WithoutExcursionsTheBandWasHeld) {
   EXPECT_THAT(text, HasSubstr("The regulator held its band of 215.0 to 225.0 V"));
   EXPECT_THAT(text, HasSubstr("98.33 %"));
   EXPECT_THAT(text, HasSubstr("50.00 %"));
-  EXPECT_THAT(text, HasSubstr("Measured: 24 h of 24 h (100.00 %)"));
+  EXPECT_THAT(text, HasSubstr("Measured: 1 d of 1 d (100.00 %)"));
 }
 
 TEST(Verdict, ExcursionsAreCountedByOriginAndTheLongestAndWorstNamed) {

@@ -1,0 +1,244 @@
+#!/usr/bin/env python3
+"""The two programs as their users meet them: tramlined by signals and exit codes, tramline by what it prints.
+
+Usage: daemon_test.py TRAMLINED TRAMLINE
+"""
+import json
+import os
+import pathlib
+import signal
+import sqlite3
+import subprocess
+import sys
+import tempfile
+import unittest
+
+ROOT = pathlib.Path(__file__).resolve().parent.parent.parent
+TRAMLINED, TRAMLINE = sys.argv[1], sys.argv[2]
+
+SITE = """\
+site: {{name: "Test <site>", zone: Asia/Kolkata, nominal_v: 220, frequency_hz: 50}}
+regulator: {{target_v: 220, band_v: [215, 225], input_v: [160, 270], speed_v_per_s: 20}}
+channels: [{{side: input}}, {{side: output}}]
+logbook: {{path: {logbook}}}
+source:
+  kind: simulator
+  rate_hz: 3200
+  real_time: {real_time}
+  begin: 2026-03-01T00:00:00Z
+  run_for: {run_for}
+  grid: {{wander_pct: 0}}
+  script:
+    - {{at: 3s, what: sag, to_pct: 60, lasting: 300ms}}
+    - {{at: 6s, what: servo_stuck}}
+    - {{at: 8s, what: swell, to_pct: 117, lasting: 5s}}
+"""
+
+
+class Programs(unittest.TestCase):
+    def setUp(self):
+        self.folder = tempfile.TemporaryDirectory()
+        self.path = pathlib.Path(self.folder.name)
+        self.logbook = self.path / "site.logbook"
+
+    def tearDown(self):
+        self.folder.cleanup()
+
+    def site(self, name="site.yaml", **change):
+        values = {"logbook": self.logbook, "real_time": "false", "run_for": "20s", **change}
+        file = self.path / name
+        file.write_text(SITE.format(**values))
+        return file
+
+    def run_program(self, *arguments):
+        return subprocess.run([str(a) for a in arguments], capture_output=True, text=True, timeout=120, check=False)
+
+    def rows(self, sql):
+        database = sqlite3.connect(self.logbook)
+        try:
+            return database.execute(sql).fetchall()
+        finally:
+            database.close()
+
+    def start(self, site):
+        daemon = subprocess.Popen([TRAMLINED, str(site)], stderr=subprocess.PIPE, text=True)
+        self.addCleanup(daemon.stderr.close)
+        self.addCleanup(daemon.kill)
+        self.wait_for(daemon, "source: simulator")
+        return daemon
+
+    def wait_for(self, daemon, words):
+        """Reads the log up to the line with these words."""
+        for line in daemon.stderr:
+            if words in line:
+                return line
+        self.fail(f"the daemon ended without saying: {words}")
+
+
+class TheDaemon(Programs):
+    def test_runs_a_simulation_to_its_end_and_leaves_a_whole_record(self):
+        done = self.run_program(TRAMLINED, self.site())
+        self.assertEqual(done.returncode, 0, done.stderr)
+        self.assertEqual(self.rows("SELECT why_ended, measured_ns FROM coverage"), [("the simulated time is over", 20_000_000_000)])
+        self.assertEqual(self.rows("SELECT why_ended FROM session"), [("the simulated time is over",)])
+        self.assertEqual(self.rows("SELECT count(*) FROM event WHERE end_reason=0"), [(0,)])
+        self.assertEqual(self.rows("PRAGMA integrity_check"), [("ok",)])
+
+    def test_writes_the_same_events_as_the_import_of_the_same_source(self):
+        self.run_program(TRAMLINED, self.site())
+        events = "SELECT side, kind, begin_sample, begin_ns, end_ns, duration_ns, extreme_v, origin, reason FROM event ORDER BY begin_ns, side, kind"
+        by_daemon = self.rows(events)
+        self.assertGreaterEqual(len(by_daemon), 4)
+        site = self.site()
+        self.logbook = self.path / "imported.logbook"
+        self.run_program(TRAMLINE, "import", "--site", site, "--into", self.logbook)
+        self.assertEqual(self.rows(events), by_daemon)
+
+    def test_stops_in_good_order_when_told_to(self):
+        for number in (signal.SIGTERM, signal.SIGINT):
+            with self.subTest(number):
+                daemon = self.start(self.site(real_time="true", run_for="1h"))
+                daemon.send_signal(number)
+                self.assertEqual(daemon.wait(60), 0)
+                ((why,),) = self.rows("SELECT why_ended FROM session ORDER BY id DESC LIMIT 1")
+                self.assertIn("told to stop", why)
+                self.assertEqual(self.rows("SELECT count(*) FROM session WHERE why_ended IS NULL"), [(0,)])
+
+    def test_refuses_a_bad_site_file_on_hup_and_goes_on_with_the_old(self):
+        site = self.site(real_time="true", run_for="1h")
+        daemon = self.start(site)
+        good = site.read_text()
+        site.write_text(good.replace("nominal_v: 220", "nominal_v: -3"))
+        daemon.send_signal(signal.SIGHUP)
+        self.assertIn("nominal_v", self.wait_for(daemon, "site.yaml:"))
+        self.wait_for(daemon, "the one in force stays")
+        site.write_text(good.replace("Test <site>", "Renamed"))
+        daemon.send_signal(signal.SIGHUP)
+        self.wait_for(daemon, "the site file is read again")
+        self.wait_for(daemon, "source: simulator")
+        daemon.send_signal(signal.SIGTERM)
+        self.assertEqual(daemon.wait(60), 0)
+        self.assertEqual(self.rows("SELECT count(*) FROM session"), [(2,)])
+        self.assertEqual(self.rows("SELECT count(*) FROM settings"), [(2,)])
+
+    def test_closes_at_the_next_start_what_a_kill_left_open(self):
+        daemon = self.start(self.site(real_time="true", run_for="1h"))
+        daemon.kill()
+        daemon.wait(60)
+        again = self.run_program(TRAMLINED, self.site())
+        self.assertEqual(again.returncode, 0, again.stderr)
+        self.assertEqual(self.rows("SELECT count(*) FROM coverage WHERE why_ended IS NULL"), [(0,)])
+        self.assertEqual(self.rows("PRAGMA integrity_check"), [("ok",)])
+
+    def test_wrong_site_files_are_reported_whole_and_nothing_is_started(self):
+        site = self.path / "bad.yaml"
+        site.write_text("site: {name: X, nominal_v: 0}\nchanels: []\n")
+        for arguments in ([site], ["--check", site]):
+            done = self.run_program(TRAMLINED, *arguments)
+            self.assertEqual(done.returncode, 2)
+            self.assertIn("bad.yaml:1:", done.stderr)
+            self.assertIn("bad.yaml:2:1", done.stderr)
+            self.assertIn("channels", done.stderr)
+        self.assertEqual([p.name for p in self.path.iterdir()], ["bad.yaml"])
+
+    def test_a_logbook_that_cannot_be_had_ends_it_with_status_3(self):
+        done = self.run_program(TRAMLINED, self.site(logbook=self.path / "no" / "such" / "folder" / "x"))
+        self.assertEqual(done.returncode, 3)
+        self.assertIn("check that the folder exists", done.stderr)
+
+    def test_every_example_site_passes_its_own_check(self):
+        for example in sorted((ROOT / "config" / "examples").glob("*.yaml")):
+            done = self.run_program(TRAMLINED, "--check", example)
+            self.assertEqual(done.returncode, 0, done.stderr)
+
+    def test_under_journald_lines_begin_with_their_priority(self):
+        done = subprocess.run([TRAMLINED, str(self.path / "none.yaml")], capture_output=True, text=True, timeout=60, check=False,
+                              env={**os.environ, "JOURNAL_STREAM": "1:2"})
+        self.assertRegex(done.stderr, r"^<3>")
+
+
+class TheTool(Programs):
+    def setUp(self):
+        super().setUp()
+        self.imported = self.run_program(TRAMLINE, "import", "--site", self.site())
+
+    def test_the_verdict_blames_the_stuck_servo_and_ends_with_1(self):
+        done = self.run_program(TRAMLINE, "verdict", self.logbook)
+        self.assertEqual(done.returncode, 1, done.stderr)
+        self.assertIn("did not hold its band of 215.0 to 225.0 V", done.stdout)
+        self.assertIn("origin: regulator", done.stdout)
+        self.assertIn("+05:30", done.stdout)
+        answer = json.loads(self.run_program(TRAMLINE, "verdict", "--json", self.logbook).stdout)
+        self.assertEqual(answer["answer"], "not held")
+        self.assertEqual(answer["coverage"]["measured_s"], 20.0)
+        self.assertNotIn("\x1b", done.stdout)
+
+    def test_a_period_without_trouble_is_answered_with_0(self):
+        done = self.run_program(TRAMLINE, "verdict", "--to", "2026-03-01T05:30:02.5", self.logbook)
+        self.assertEqual(done.returncode, 0, done.stdout + done.stderr)
+        self.assertIn("held its band", done.stdout)
+
+    def test_events_are_listed_and_filtered(self):
+        every = [json.loads(line) for line in self.run_program(TRAMLINE, "events", "--json", self.logbook).stdout.splitlines()]
+        self.assertEqual({e["kind"] for e in every}, {"sag", "swell", "out of band"})
+        sags = self.run_program(TRAMLINE, "events", "--json", "--kind", "sag", "--side", "input", self.logbook).stdout.splitlines()
+        self.assertEqual(len(sags), 1)
+        sag = json.loads(sags[0])
+        self.assertAlmostEqual(sag["extreme_v"], 132.0, delta=0.5)
+        self.assertAlmostEqual(sag["duration_s"], 0.31, delta=0.02)
+        long = self.run_program(TRAMLINE, "events", "--json", "--longer-than", "1s", "--kind", "swell", self.logbook).stdout.splitlines()
+        self.assertEqual(len(long), 2)
+
+    def test_a_waveform_is_drawn_and_written_as_a_table(self):
+        svg = self.run_program(TRAMLINE, "wave", self.logbook, "2").stdout
+        self.assertTrue(svg.startswith("<svg"))
+        self.assertIn("Test &lt;site&gt;", svg)
+        self.assertNotIn("<site>", svg)
+        out = self.path / "w.csv"
+        self.assertEqual(self.run_program(TRAMLINE, "wave", "--csv", "-o", out, self.logbook, "2").returncode, 0)
+        header, *rows = out.read_text().splitlines()
+        self.assertEqual(header, "time_from_event_begin_s,input_L1_v,input_L1_half_cycle_rms_v,output_L1_v,output_L1_half_cycle_rms_v")
+        self.assertGreater(len(rows), 1000)
+
+    def test_wrong_questions_end_with_2_and_say_why(self):
+        for arguments, words in (
+            (["verdict", self.path / "none"], "no such logbook"),
+            (["verdict", self.path / "site.yaml"], "not an SQLite file"),
+            (["verdict", "--from", "yesterday", self.logbook], "--from"),
+            (["verdict", "--from", "2026-03-02T00:00", "--to", "2026-03-01T00:00", self.logbook], "ends before it begins"),
+            (["wave", self.logbook, "9999"], "no event with this number"),
+            (["import", self.path / "none.wav", "--nominal-v", "230", "--into", self.path / "x"], "cannot be opened"),
+            (["import", self.path / "site.yaml", "--into", self.path / "x"], "--nominal-v"),
+            (["frobnicate"], ""),
+        ):
+            with self.subTest(arguments):
+                done = self.run_program(TRAMLINE, *arguments)
+                self.assertEqual(done.returncode, 2, done.stdout + done.stderr)
+                self.assertIn(words, done.stderr + done.stdout)
+
+    def test_an_undated_recording_is_marked_so(self):
+        import math
+        import struct
+        import wave as wav
+        path = self.path / "mains.wav"
+        with wav.open(str(path), "wb") as out:
+            out.setnchannels(1)
+            out.setsampwidth(2)
+            out.setframerate(6400)
+            for n in range(32000):
+                level = 0.5 if 12800 <= n < 16000 else 1.0
+                out.writeframesraw(struct.pack("<h", round(level * 20000 * math.sin(2 * math.pi * 50 * n / 6400))))
+        volts = 20000 / 32768 * 500 / math.sqrt(2)
+        logbook = self.path / "wav.logbook"
+        done = self.run_program(TRAMLINE, "import", path, "--nominal-v", volts, "--channel", "input.L1=1*500", "--into", logbook)
+        self.assertEqual(done.returncode, 0, done.stderr)
+        self.assertIn("undated", done.stdout)
+        self.assertEqual(done.stderr, "")  # no progress bar in a pipe
+        events = self.run_program(TRAMLINE, "events", logbook).stdout
+        self.assertIn("1.99 s from the begin", events)
+        dated = self.run_program(TRAMLINE, "import", path, "--nominal-v", volts, "--channel", "input.L1=1*500", "--start", "2026-03-01T06:00+05:30", "--into", self.path / "d")
+        self.assertNotIn("undated", dated.stdout)
+
+
+if __name__ == "__main__":
+    unittest.main(argv=sys.argv[:1], verbosity=1)
