@@ -11,8 +11,8 @@ constexpr double kLeastFundamental = 0.02;  // of nominal: below, noise would se
 constexpr double kEarliest = 0.30;          // of a cycle after the last tick
 constexpr double kLatest = 0.85;            // more than half a cycle later, so a crossing always falls between
 constexpr double kPeriodRange = 0.16;       // 15 % and a little, for the ends of the range themselves
-constexpr double kSteadyAmplitude = 0.02;   // largest relative change in a cycle called undisturbed
-constexpr double kSteadyPeriod = 0.003;
+constexpr double kSteadyAmplitude = 0.01;   // largest relative change in a cycle called undisturbed
+constexpr double kSteadyPeriod = 0.002;
 constexpr double kJump = 0.01;
 constexpr int kFlywheelTicks = 8;       // the band-pass spreads a step over four, and it takes three more to be sure
 constexpr double kFlywheelReach = 0.15; // of a cycle: what a step in amplitude alone can do to a crossing, and more
@@ -31,13 +31,20 @@ void CycleGrid::restart(SamplePosition origin) {
   past_count_ = 0;
   starting_ = true;
   held_count_ = 0;
+  flywheel_ticks_ = 0;
+  unbroken_ = restless_ = 0;
+  gone_ = seen_ = false;
 }
 
 void CycleGrid::follow(std::span<const Crossing> crossings, SamplePosition progress, std::vector<GridTick>& out) {
   for (const Crossing& crossing : crossings) {
+    if (crossing.amplitude_v < least_amplitude_v_) continue;
     free_run_until(crossing.at, out);
-    const bool early = past_count_ > 0 && crossing.at < last_ + kEarliest * period_;
-    if (!early && crossing.amplitude_v >= least_amplitude_v_) take(crossing, out);
+    if (gone_) flywheel_ticks_ = 0;  // the waveform is back: it gets as long to settle as it had to fade
+    gone_ = false;
+    seen_ = true;
+    const bool early = past_count_ > 0 && crossing.at < last_ + (on_flywheel() ? 0.5 - kFlywheelReach : kEarliest) * period_;
+    if (!early) take(crossing, out);
   }
   free_run_until(progress, out);
 }
@@ -55,6 +62,8 @@ GridTick CycleGrid::free_running_tick() const {
   tick.period = period_;
   return tick;
 }
+
+bool CycleGrid::on_flywheel() const { return !starting_ && good_count_ > 0 && flywheel_ticks_ < kFlywheelTicks; }
 
 void CycleGrid::end_start(std::vector<GridTick>& out) {
   starting_ = false;
@@ -84,12 +93,16 @@ void CycleGrid::free_run_until(SamplePosition limit, std::vector<GridTick>& out)
     if (limit <= origin_ + kLongestStart * nominal_period_) return;
     end_start(out);
   }
-  while (limit > last_ + kLatest * period_) {
+  while (limit > last_ + (on_flywheel() ? 0.5 + kFlywheelReach : kLatest) * period_) {
     last_ += period_ / 2.0;
     last_rising_ = !last_rising_;
     past_[1] = past_[0];
     past_[0] = {last_, false, false, 0.0, 0.0};
     past_count_ = std::min<std::size_t>(past_count_ + 1, 2);
+    gone_ = !seen_;
+    seen_ = false;
+    flywheel_ticks_ = std::min(flywheel_ticks_ + 1, kFlywheelTicks);
+    unbroken_ = 0;
     out.push_back(free_running_tick());
   }
 }
@@ -110,16 +123,28 @@ void CycleGrid::take(const Crossing& crossing, std::vector<GridTick>& out) {
       tick.jump = change > kJump * now.cycle;
     }
   }
+  // The crossing of 16 cycles ago, if all since were measured: a restless supply has no undisturbed cycle, but
+  // over that many its period shows all the same.
+  const bool long_run = unbroken_ >= recent_.size();
+  const SamplePosition long_ago = recent_[next_recent_];
+  recent_[next_recent_] = crossing.at;
+  next_recent_ = (next_recent_ + 1) % recent_.size();
+  ++unbroken_;
+  ++restless_;
   if (undisturbed) {
     remember(now.cycle);
     tick.period = period_;
     flywheel_ticks_ = 0;
-  } else if (!starting_ && flywheel_ticks_ < kFlywheelTicks) {
-    const SamplePosition expected = last_ + period_ / 2.0;
-    if (std::abs(crossing.at - expected) < kFlywheelReach * period_) {
-      tick.at = expected;
-      now.moved = true;
-      ++flywheel_ticks_;
+    restless_ = 0;
+  } else if (on_flywheel()) {
+    tick.at = last_ + period_ / 2.0;
+    now.moved = true;
+    ++flywheel_ticks_;
+  } else if (long_run && restless_ > recent_.size()) {
+    const double mean = (crossing.at - long_ago) / (static_cast<double>(recent_.size()) / 2.0);
+    if (std::abs(nominal_period_ - mean) <= kPeriodRange * mean) {
+      period_ = mean;
+      tick.period = mean;
     }
   }
   tick.steady = undisturbed && !past_[0].moved && !past_[1].moved;
@@ -128,6 +153,7 @@ void CycleGrid::take(const Crossing& crossing, std::vector<GridTick>& out) {
   past_count_ = std::min<std::size_t>(past_count_ + 1, 2);
   last_ = tick.at;
   last_rising_ = crossing.rising;
+  seen_ = false;
   if (!starting_) {
     out.push_back(tick);
     return;

@@ -25,9 +25,11 @@ struct GridTick {
 ///
 /// A crossing is taken if the fundamental is at least 2 % of nominal there and if it lies 0.3 to 0.85 of a cycle
 /// after the tick before. A sudden change of amplitude shifts the crossings of the band-passed copy, though not those of the
-/// voltage; so while the waveform is disturbed, for at most four cycles, a crossing near to where the last good
-/// period expects it counts as being there. Where no crossing comes, because the waveform is gone, the grid runs on with the last
-/// good period (the mean of up to four undisturbed cycles), so that an interruption of any length has half-cycle values.
+/// voltage, and as a waveform fades or returns the filter's own ringing has crossings too. So while the waveform is
+/// disturbed, for at most four cycles, the grid keeps the last good period: a crossing near to where it is expected counts as
+/// being there, others are passed over. Where no crossing comes, because the waveform is gone, the grid runs on with the last
+/// good period (the mean of the last four undisturbed cycles or, on a supply so restless that there are none, of the last
+/// sixteen), so that an interruption of any length has half-cycle values.
 /// At the begin of a stretch the first ticks wait, for up to four cycles, until the period is known; then the grid is
 /// drawn backwards to the begin, so that no cycle of a short recording is left out.
 /// One thread; allocates nothing.
@@ -53,6 +55,8 @@ class CycleGrid {
   void free_run_until(SamplePosition limit, std::vector<GridTick>& out);
   void take(const Crossing& crossing, std::vector<GridTick>& out);
   void end_start(std::vector<GridTick>& out);
+  /// Whether ticks stand where the last good period expects them, rather than at every crossing that comes.
+  [[nodiscard]] bool on_flywheel() const;
   [[nodiscard]] GridTick free_running_tick() const;  // at `last_`
   void remember(double period);
 
@@ -71,7 +75,13 @@ class CycleGrid {
   };
   std::array<Past, 2> past_{};  // the last tick and the one before
   std::size_t past_count_ = 0;
-  int flywheel_ticks_ = 0;      // moved since the last undisturbed cycle
+  int flywheel_ticks_ = 0;      // moved or free-running since the last undisturbed cycle
+  std::array<SamplePosition, 32> recent_{};  // the last crossings taken, 16 cycles
+  std::size_t next_recent_ = 0;
+  std::size_t unbroken_ = 0;    // crossings taken since the grid last ran free
+  std::size_t restless_ = 0;    // ticks since the last undisturbed cycle
+  bool seen_ = false;           // a crossing since the last tick, taken or not
+  bool gone_ = false;           // no crossing between the last two ticks
   SamplePosition origin_ = 0.0;
   SamplePosition last_ = 0.0;  // the last tick, or the origin before there is one
   bool last_rising_ = false;

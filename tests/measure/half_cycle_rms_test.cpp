@@ -132,6 +132,21 @@ TEST(HalfCycleRms, AJumpInPhaseLeavesTheValuesWhole) {
   }
 }
 
+// A supply that swings by 3 % at 13 Hz all the time, well off the nominal frequency.
+TEST(HalfCycleRms, ARestlessSupplyIsMeasuredOverItsOwnPeriodToo) {
+  const auto swinging = [](double t) { return 1.0 + 0.03 * std::sin(2.0 * std::numbers::pi * 13.0 * t); };
+  const auto values = half_cycles(sampled(sine(230.0, 48.0, swinging), 6.0));
+  double sum = 0.0;
+  std::size_t count = 0;
+  for (const auto& value : values) {
+    if (value.begin < kRate) continue;
+    EXPECT_NEAR((value.end - value.begin) / kRate, 1.0 / 48.0, 0.002 / 48.0);
+    sum += value.u_rms_v * value.u_rms_v;
+    ++count;
+  }
+  EXPECT_NEAR(std::sqrt(sum / static_cast<double>(count)), 230.0 * std::sqrt(1.0 + 0.03 * 0.03 / 2.0), 0.1);
+}
+
 TEST(HalfCycleRms, AShortRecordingIsMeasuredFromItsFirstCycleToItsLast) {
   const auto values = half_cycles(sampled(sine(230.0, 50.3), 0.3));
   ASSERT_FALSE(values.empty());
