@@ -140,6 +140,11 @@ class WavSource : public Source {
         wanted.high_v = std::min(wanted.high_v, static_cast<float>(channels[c].range_v));
       }
       wanted_.push_back(wanted);
+      if (channels[c].range_v > 0.0) {
+        // A sensor's own limit may lie anywhere: look at every sample.
+        lowest_safe_ = 0;
+        highest_safe_ = 0;
+      }
     }
     info_.rate_hz = format.rate_hz;
     info_.dated = settings.begin.has_value();
@@ -229,7 +234,9 @@ class WavSource : public Source {
       frames = sound;
       if (frames == 0) return 0;
     }
-    for (std::size_t c = 0; c < wanted_.size(); ++c) note_over_range(block, c);
+    if (may_touch_limit(from, frames)) {
+      for (std::size_t c = 0; c < wanted_.size(); ++c) note_over_range(block, c);
+    }
     return frames;
   }
 
@@ -243,24 +250,24 @@ class WavSource : public Source {
     return sound;
   }
 
+  /// false: surely no sample of these frames stands at a limit. Of 16-bit samples the extremes tell, and they vectorise.
+  [[nodiscard]] bool may_touch_limit(const std::uint8_t* from, std::size_t frames) const {
+    if (format_.encoding != Encoding::pcm16) return true;
+    std::int16_t low = 0;
+    std::int16_t high = 0;
+    for (std::size_t i = 0; i < frames * format_.channels; ++i) {
+      std::int16_t sample = 0;
+      std::memcpy(&sample, from + 2 * i, 2);
+      low = std::min(low, sample);
+      high = std::max(high, sample);
+    }
+    return low <= lowest_safe_ || high >= highest_safe_;
+  }
+
   void note_over_range(measure::Block& block, std::size_t channel) const {
     const auto volts = block.channel(channel);
     const Wanted& wanted = wanted_[channel];
-    // Lowest and highest vectorise; only a block that touches a limit is looked at sample by sample.
-    float low[4] = {volts[0], volts[0], volts[0], volts[0]};
-    float high[4] = {volts[0], volts[0], volts[0], volts[0]};
-    std::size_t i = 0;
-    for (; i + 4 <= volts.size(); i += 4) {
-      for (std::size_t k = 0; k < 4; ++k) {
-        low[k] = volts[i + k] < low[k] ? volts[i + k] : low[k];
-        high[k] = volts[i + k] > high[k] ? volts[i + k] : high[k];
-      }
-    }
-    bool touches = false;
-    for (std::size_t k = 0; k < 4; ++k) touches = touches || low[k] <= wanted.low_v || high[k] >= wanted.high_v;
-    for (; i < volts.size(); ++i) touches = touches || volts[i] <= wanted.low_v || volts[i] >= wanted.high_v;
-    if (!touches) return;
-    for (i = 0; i < volts.size(); ++i) {
+    for (std::size_t i = 0; i < volts.size(); ++i) {
       if (volts[i] > wanted.low_v && volts[i] < wanted.high_v) continue;
       auto& spans = block.over_range;
       if (!spans.empty() && spans.back().channel == channel && spans.back().first_frame + spans.back().frames == i) {
@@ -285,6 +292,8 @@ class WavSource : public Source {
   bool missing_before_ = false;
   bool truncated_ = false;
   std::size_t torn_ = 0;
+  std::int16_t lowest_safe_ = -32767;  // raw values at or beyond these have to be looked at
+  std::int16_t highest_safe_ = 32767;
 };
 
 }  // namespace

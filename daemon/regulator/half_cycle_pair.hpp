@@ -38,13 +38,21 @@ class PairMaker {
   void restart();
 
  private:
-  [[nodiscard]] HalfCyclePair join(const measure::HalfCycle* input, const measure::HalfCycle* output) const;
+  /// What a pair needs of an input value.
+  struct Input {
+    measure::SamplePosition at = 0.0;
+    double volts = 0.0;
+  };
+  [[nodiscard]] HalfCyclePair one_sided(const measure::HalfCycle& half_cycle) const;
+  void meet(HalfCyclePair& pair, double input_v) const;
 
   bool has_input_;
   bool has_output_;
   double least_input_v_;
-  std::optional<measure::HalfCycle> last_input_;
-  std::optional<measure::HalfCycle> waiting_output_;
+  bool input_known_ = false;
+  Input last_input_;
+  bool output_waits_ = false;
+  HalfCyclePair waiting_;  // the output's half, until the next input value shows which one is nearer
 };
 
 }  // namespace tramline::regulator
