@@ -341,7 +341,7 @@ def event_train(hz, degrees, levels, lengths, points, harmonics=()):
 def event_table(core, ledger):
     """Depth x duration x point on wave x frequency; X1: the same with 8 % THD and off nominal frequency."""
     levels = (0.0, 0.2, 0.4, 0.7, 0.8, 0.86, 1.12, 1.17, 1.5)
-    lengths = (0.5, 0.77, 1.0, 1.5, 2.3, 5.0, 10.0)
+    lengths = (0.5, 0.8, 1.0, 1.5, 2.3, 5.0, 10.0)
     points = (0.0, 22.5, 45.0, 67.5, 90.0, 135.0, 180.0, 247.5)
     thd = ((3, 0.05, 20.0), (5, 0.05, 200.0), (7, 0.0374166, 90.0))
     for nominal, hz, harmonics in ((50.0, 50.0, ()), (50.0, 49.5, ()), (50.0, 50.5, ()), (50.0, 42.5, ()), (50.0, 57.5, ()),
