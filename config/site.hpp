@@ -29,8 +29,8 @@ struct RegulatorSettings {
   double target_v = 0.0;
   double band_low_v = 0.0;
   double band_high_v = 0.0;
-  double ratio_min = 0.0;  ///< lowest U_out/U_in it can reach
-  double ratio_max = 0.0;  ///< highest
+  double ratio_min = 0.0;               ///< lowest U_out/U_in it can reach
+  double ratio_max = 0.0;               ///< highest
   std::optional<double> speed_v_per_s;  ///< output volts a second while correcting, at nominal input
   double response_s = 0.05;             ///< sense delay before the motor starts
   double grace_s = 1.0;                 ///< out of band for longer than this is an excursion of its own
@@ -67,46 +67,46 @@ struct LogbookSettings {
 
 /// The simulated supply when nothing happens to it.
 struct GridSettings {
-  double voltage_v = 0.0;           ///< r.m.s.; 0: the site's nominal
-  double wander_pct = 3.0;          ///< slow wander over the day, peak, percent of voltage_v
-  double noise_v = 0.2;             ///< r.m.s. of white noise on each sample
-  double frequency_drift_hz = 0.03; ///< peak of the slow frequency wander
-  double sensor_noise_v = 0.05;     ///< r.m.s. of white noise of each sensor
+  double voltage_v = 0.0;            ///< r.m.s.; 0: the site's nominal
+  double wander_pct = 3.0;           ///< slow wander over the day, peak, percent of voltage_v
+  double noise_v = 0.2;              ///< r.m.s. of white noise on each sample
+  double frequency_drift_hz = 0.03;  ///< peak of the slow frequency wander
+  double sensor_noise_v = 0.05;      ///< r.m.s. of white noise of each sensor
   std::map<int, double> harmonics_pct = {{3, 1.5}, {5, 2.5}, {7, 1.0}};  ///< order -> percent of fundamental
 };
 
 /// The simulated servo regulator: constant-speed motor, window comparator behind a sensing filter.
 struct ServoSettings {
-  double target_v = 0.0;            ///< 0: the site's regulator target
-  double comparator_low_v = 0.0;    ///< 0: the site's band
+  double target_v = 0.0;          ///< 0: the site's regulator target
+  double comparator_low_v = 0.0;  ///< 0: the site's band
   double comparator_high_v = 0.0;
-  double ratio_min = 0.0;           ///< 0: the site's
+  double ratio_min = 0.0;  ///< 0: the site's
   double ratio_max = 0.0;
-  double speed_v_per_s = 20.0;      ///< output volts a second at nominal input
-  double sense_filter_s = 0.05;     ///< first-order time constant of the sensing filter
-  double coast_s = 0.0;             ///< the motor runs on for this long when switched off
+  double speed_v_per_s = 20.0;   ///< output volts a second at nominal input
+  double sense_filter_s = 0.05;  ///< first-order time constant of the sensing filter
+  double coast_s = 0.0;          ///< the motor runs on for this long when switched off
   double output_impedance_ohm = 0.1;
-  double load_a = 5.0;              ///< load current at nominal voltage (resistive)
-  double load_step_a = 3.0;         ///< size of the load's random steps; 0: none
-  double load_step_every_s = 300.0; ///< their mean distance
+  double load_a = 5.0;               ///< load current at nominal voltage (resistive)
+  double load_step_a = 3.0;          ///< size of the load's random steps; 0: none
+  double load_step_every_s = 300.0;  ///< their mean distance
 };
 
 /// One line of the simulator's script. Which figures it uses depends on `what`.
 struct ScriptedHappening {
   enum class What {
-    sag,            ///< grid: voltage times `to_pct`/100 for `lasting_s`
-    swell,          ///< grid: the same, above 100
-    interruption,   ///< grid: no voltage for `lasting_s`
-    level,          ///< grid: ramp to `to_v` within `ramp_s`, hold for `lasting_s`, ramp back within `ramp_s`
-    servo_stuck,    ///< the wiper stays where it is
-    servo_stuck_at, ///< the wiper sticks as soon as the ratio passes `ratio` (or comes within 0.002 of it)
-    servo_slow,     ///< speed times `factor`
-    servo_reversed, ///< the motor runs the wrong way
-    servo_hunting,  ///< the sensing filter's time constant times `factor`
-    output_open,    ///< the output is not connected
-    load_step,      ///< load current becomes `to_a`
+    sag,           ///< grid: voltage times `to_pct`/100 for `lasting_s`
+    swell,         ///< grid: the same, above 100
+    interruption,  ///< grid: no voltage for `lasting_s`
+    level,         ///< grid: ramp to `to_v` within `ramp_s`, hold for `lasting_s`, ramp back within `ramp_s`
+    servo_stuck,   ///< the wiper stays where it is
+    servo_stuck_at,  ///< the wiper sticks as soon as the ratio passes `ratio` (or comes within 0.002 of it)
+    servo_slow,      ///< speed times `factor`
+    servo_reversed,  ///< the motor runs the wrong way
+    servo_hunting,   ///< the sensing filter's time constant times `factor`
+    output_open,     ///< the output is not connected
+    load_step,       ///< load current becomes `to_a`
   };
-  double at_s = 0.0;       ///< seconds from the begin of the simulation
+  double at_s = 0.0;  ///< seconds from the begin of the simulation
   What what = What::sag;
   double lasting_s = 0.0;  ///< 0 for a servo fault or a load step: until the end
   double to_pct = 0.0;
@@ -115,14 +115,14 @@ struct ScriptedHappening {
   double ramp_s = 0.0;
   double ratio = 0.0;
   double factor = 1.0;
-  double phase_deg = 0.0;  ///< point on wave (0: at the upward zero crossing of L1) at which it begins
+  double phase_deg = 0.0;     ///< point on wave (0: at the upward zero crossing of L1) at which it begins
   std::vector<Phase> phases;  ///< empty: all
 };
 
 struct SimulatorSettings {
   double rate_hz = 6400.0;
   std::uint64_t seed = 1;
-  bool real_time = true;  ///< false: as fast as it goes
+  bool real_time = true;       ///< false: as fast as it goes
   std::optional<UtcNs> begin;  ///< absent: now, as the daemon starts
   double run_for_s = 0.0;      ///< 0: until stopped
   GridSettings grid;
@@ -137,10 +137,11 @@ enum class RecordingFormat { by_name, wav, csv, comtrade };
 struct RecordingSettings {
   std::string path;
   RecordingFormat format = RecordingFormat::by_name;
-  std::optional<UtcNs> begin;       ///< time of the first sample, over the recording's own
-  std::optional<double> rate_hz;    ///< CSV without a time column
-  std::string time_column;          ///< CSV: name or number of the time column; empty: none if rate_hz is given, else the first
-  bool primary = false;             ///< COMTRADE: take primary values, else secondary
+  std::optional<UtcNs> begin;     ///< time of the first sample, over the recording's own
+  std::optional<double> rate_hz;  ///< CSV without a time column
+  std::string time_column;  ///< CSV: name or number of the time column; empty: none if rate_hz is given, else
+                            ///< the first
+  bool primary = false;     ///< COMTRADE: take primary values, else secondary
 };
 
 using SourceSettings = std::variant<SimulatorSettings, RecordingSettings>;
@@ -149,19 +150,20 @@ using SourceSettings = std::variant<SimulatorSettings, RecordingSettings>;
 
 struct Site {
   std::string name;
-  std::string zone = "UTC";      ///< IANA time zone in which people read its times
-  double nominal_v = 0.0;        ///< U_din, r.m.s., phase to neutral
-  double nominal_hz = 50.0;      ///< 50 or 60
-  int phases = 1;                ///< 1 or 3
+  std::string zone = "UTC";               ///< IANA time zone in which people read its times
+  double nominal_v = 0.0;                 ///< U_din, r.m.s., phase to neutral
+  double nominal_hz = 50.0;               ///< 50 or 60
+  int phases = 1;                         ///< 1 or 3
   std::vector<ChannelSettings> channels;  ///< inputs before outputs, L1 before L2 before L3
   std::optional<RegulatorSettings> regulator;
   EventSettings events;
   CaptureSettings capture;
   LogbookSettings logbook;
   SourceSettings source;
-  std::string text;              ///< the file as read, for the settings history
+  std::string text;  ///< the file as read, for the settings history
 
-  /// The lines between which a voltage counts as in band: the regulator's, or sag and swell thresholds without one.
+  /// The lines between which a voltage counts as in band: the regulator's, or sag and swell thresholds
+  /// without one.
   struct Band {
     double low_v;
     double high_v;

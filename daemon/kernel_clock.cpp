@@ -9,7 +9,8 @@ storage::ClockState kernel_clock_state() {
   const int answer = adjtimex(&state);
   if (answer < 0) return {};
   // maxerror is in microseconds.
-  return {answer != TIME_ERROR && (state.status & STA_UNSYNC) == 0, static_cast<std::int64_t>(state.maxerror) * 1000};
+  return {answer != TIME_ERROR && (state.status & STA_UNSYNC) == 0,
+          static_cast<std::int64_t>(state.maxerror) * 1000};
 }
 
 }  // namespace tramline

@@ -22,7 +22,9 @@ class Priority : public spdlog::custom_flag_formatter {
     const char text[] = {'<', digit, '>'};
     out.append(text, text + sizeof text);
   }
-  [[nodiscard]] std::unique_ptr<custom_flag_formatter> clone() const override { return std::make_unique<Priority>(); }
+  [[nodiscard]] std::unique_ptr<custom_flag_formatter> clone() const override {
+    return std::make_unique<Priority>();
+  }
 };
 
 }  // namespace

@@ -24,13 +24,15 @@ int check(const std::string& path) {
 }  // namespace
 
 int main(int argc, char** argv) {
-  CLI::App app("Samples a mains supply and its servo regulator, measures, and keeps the logbook.", "tramlined");
+  CLI::App app("Samples a mains supply and its servo regulator, measures, and keeps the logbook.",
+               "tramlined");
   std::string site_file;
   bool only_check = false;
   app.set_version_flag("--version", std::string("tramlined ") + tramline::kVersion);
   app.add_option("SITE", site_file, "the site file")->required();
   app.add_flag("--check", only_check, "only read the site file and report its faults");
-  app.footer("Exit status: 0 stopped in good order, or no faults; 2 wrong usage or site file; 3 could not run.");
+  app.footer(
+      "Exit status: 0 stopped in good order, or no faults; 2 wrong usage or site file; 3 could not run.");
   try {
     app.parse(argc, argv);
   } catch (const CLI::ParseError& error) {

@@ -11,8 +11,8 @@
 
 namespace tramline {
 
-/// The way of a sample: block, measurement core, regulator watch, records. The daemon and the import of a recording
-/// both go through here. One thread; `site` must outlive it.
+/// The way of a sample: block, measurement core, regulator watch, records. The daemon and the import of a
+/// recording both go through here. One thread; `site` must outlive it.
 class Pipeline {
  public:
   /// `why`: the reason of the first coverage record, "daemon started".

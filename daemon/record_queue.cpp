@@ -22,7 +22,8 @@ bool is_detail(const storage::Record& record) {
 std::size_t waveform_bytes(const storage::Record& record) {
   std::size_t bytes = 0;
   if (const auto* waveform = std::get_if<storage::Waveform>(&record)) {
-    for (const auto& trace : waveform->traces) bytes += trace.steps.size() * sizeof(std::int16_t);
+    for (const auto& trace : waveform->traces)
+      bytes += trace.steps.size() * sizeof(std::int16_t);
   }
   return bytes;
 }

@@ -14,8 +14,9 @@ namespace tramline {
 
 /// The one place where the measuring thread and the writer thread meet: a bounded queue of records.
 ///
-/// Putting never waits. Events, coverage and clock records have a lane of their own, so when the disk does not keep
-/// up the aggregates and waveforms go first; what is dropped is counted. Safe for one thread on each side.
+/// Putting never waits. Events, coverage and clock records have a lane of their own, so when the disk does
+/// not keep up the aggregates and waveforms go first; what is dropped is counted. Safe for one thread on each
+/// side.
 class RecordQueue {
  public:
   struct Limits {
@@ -32,9 +33,10 @@ class RecordQueue {
     std::vector<storage::Record> records;  ///< events and coverage first, then the details
     std::int64_t events_dropped = 0;       ///< since the batch before
     std::int64_t details_dropped = 0;
-    bool closed = false;                   ///< no more will come
+    bool closed = false;  ///< no more will come
   };
-  /// Waits until there are records of the first lane, or the queue is closed, or `patience` is over; then takes all.
+  /// Waits until there are records of the first lane, or the queue is closed, or `patience` is over; then
+  /// takes all.
   [[nodiscard]] Batch take(std::chrono::milliseconds patience);
 
   void close();

@@ -20,7 +20,9 @@ constexpr std::chrono::seconds kFirstRetry(1);
 constexpr std::chrono::seconds kLongestRetry(60);
 
 UtcNs now() {
-  return {std::chrono::duration_cast<std::chrono::nanoseconds>(std::chrono::system_clock::now().time_since_epoch()).count()};
+  return {std::chrono::duration_cast<std::chrono::nanoseconds>(
+              std::chrono::system_clock::now().time_since_epoch())
+              .count()};
 }
 
 /// A recording is read as fast as it goes; the simulator as its settings say.
@@ -41,10 +43,12 @@ Service::Service(std::string site_file, std::shared_ptr<spdlog::logger> log)
 ServiceExit Service::run() {
   config::SiteFile file = config::read_site_file(site_file_);
   if (!file.ok()) {
-    for (const config::Fault& fault : file.faults) log_->error("{}", fault.text(file.file_name));
+    for (const config::Fault& fault : file.faults)
+      log_->error("{}", fault.text(file.file_name));
     return ServiceExit::wrong_input;
   }
-  for (const config::Fault& remark : file.remarks) log_->warn("{}", remark.text(file.file_name));
+  for (const config::Fault& remark : file.remarks)
+    log_->warn("{}", remark.text(file.file_name));
   site_ = std::make_unique<config::Site>(std::move(*file.site));
 
   storage::OpenOptions options;
@@ -55,14 +59,16 @@ ServiceExit Service::run() {
     log_->error("{}", logbook.error().text());
     return ServiceExit::could_not;
   }
-  for (const std::string& remark : logbook.value().opening_remarks()) log_->warn("{}", remark);
-  writer_.emplace(std::move(logbook).value(), site_->logbook, queue_, [this](bool trouble, const std::string& words) {
-    if (trouble) {
-      log_->error("{}", words);
-    } else {
-      log_->info("{}", words);
-    }
-  });
+  for (const std::string& remark : logbook.value().opening_remarks())
+    log_->warn("{}", remark);
+  writer_.emplace(std::move(logbook).value(), site_->logbook, queue_,
+                  [this](bool trouble, const std::string& words) {
+                    if (trouble) {
+                      log_->error("{}", words);
+                    } else {
+                      log_->info("{}", words);
+                    }
+                  });
 
   log_->info("tramlined {}: site {}, logbook {}", kVersion, site_->name, site_->logbook.path);
   await_signal();
@@ -83,11 +89,13 @@ void Service::open_source() {
   real_time_ = runs_in_real_time(*site_);
   const acquire::StreamInfo& info = source_->info();
   log_->info("source: {}", info.what);
-  for (const std::string& remark : info.remarks) log_->info("source: {}", remark);
+  for (const std::string& remark : info.remarks)
+    log_->info("source: {}", remark);
 
   pipeline_ = std::make_unique<Pipeline>(*site_, info, "the daemon opened its source");
   look_at_clock();
-  records_.emplace_back(storage::SessionBegin{std::string("tramlined ") + kVersion, info.what, info.rate_hz, info.dated, info.begin});
+  records_.emplace_back(storage::SessionBegin{std::string("tramlined ") + kVersion, info.what, info.rate_hz,
+                                              info.dated, info.begin});
   records_.emplace_back(storage::SettingsInForce{info.begin, site_->text});
   queue_.put(records_);
   source_began_ = Clock::now();
@@ -156,7 +164,8 @@ void Service::schedule(Clock::duration after) {
 void Service::source_failed(const Error& error) {
   log_->error("source: {}", error.text());
   close_source(storage::EventEnd::gap, "the source failed: " + error.what);
-  log_->warn("opening the source again in {} s", std::chrono::duration_cast<std::chrono::seconds>(retry_after_).count());
+  log_->warn("opening the source again in {} s",
+             std::chrono::duration_cast<std::chrono::seconds>(retry_after_).count());
   schedule(retry_after_);
   retry_after_ = std::min<Clock::duration>(2 * retry_after_, kLongestRetry);
 }
@@ -176,7 +185,8 @@ void Service::await_signal() {
 void Service::reread() {
   config::SiteFile file = config::read_site_file(site_file_);
   if (!file.ok()) {
-    for (const config::Fault& fault : file.faults) log_->error("{}", fault.text(file.file_name));
+    for (const config::Fault& fault : file.faults)
+      log_->error("{}", fault.text(file.file_name));
     log_->error("the site file is refused; the one in force stays");
     return;
   }

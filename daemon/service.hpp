@@ -3,13 +3,13 @@
 #include <coroutine>
 #include <utility>
 
+#include <spdlog/logger.h>
 #include <boost/asio/io_context.hpp>
 #include <boost/asio/signal_set.hpp>
 #include <boost/asio/steady_timer.hpp>
 #include <chrono>
 #include <memory>
 #include <optional>
-#include <spdlog/logger.h>
 #include <string>
 #include <vector>
 
@@ -23,16 +23,17 @@ namespace tramline {
 
 /// What the daemon leaves behind for the shell and the service manager.
 enum class ServiceExit : int {
-  stopped = 0,       ///< in good order
-  wrong_input = 2,   ///< the site file is wrong; nothing was started
-  could_not = 3,     ///< the logbook cannot be had
+  stopped = 0,      ///< in good order
+  wrong_input = 2,  ///< the site file is wrong; nothing was started
+  could_not = 3,    ///< the logbook cannot be had
 };
 
 /// The daemon at work: one event loop that reads the source and measures, one writer thread behind the queue.
 ///
-/// TERM and INT stop in good order: what is open is closed, partial intervals are stored as such. HUP reads the site file
-/// again; a bad one is refused with its faults in the log, and the old one stays in force. A source that fails ends coverage with
-/// the reason and is opened again, after a second at first and then less and less often, at least once a minute.
+/// TERM and INT stop in good order: what is open is closed, partial intervals are stored as such. HUP reads
+/// the site file again; a bad one is refused with its faults in the log, and the old one stays in force. A
+/// source that fails ends coverage with the reason and is opened again, after a second at first and then less
+/// and less often, at least once a minute.
 class Service {
  public:
   Service(std::string site_file, std::shared_ptr<spdlog::logger> log);

@@ -17,12 +17,15 @@ constexpr std::chrono::hours kPruneEvery(1);
 constexpr std::size_t kMostWaiting = 20000;
 
 UtcNs now() {
-  return {std::chrono::duration_cast<std::chrono::nanoseconds>(std::chrono::system_clock::now().time_since_epoch()).count()};
+  return {std::chrono::duration_cast<std::chrono::nanoseconds>(
+              std::chrono::system_clock::now().time_since_epoch())
+              .count()};
 }
 
 }  // namespace
 
-WriterThread::WriterThread(storage::LogbookWriter logbook, config::LogbookSettings settings, RecordQueue& queue, Tell tell)
+WriterThread::WriterThread(storage::LogbookWriter logbook, config::LogbookSettings settings,
+                           RecordQueue& queue, Tell tell)
     : logbook_(std::move(logbook)), settings_(std::move(settings)), queue_(queue), tell_(std::move(tell)) {
   thread_ = std::thread([this] { run(); });
 }
@@ -40,10 +43,13 @@ void WriterThread::run() {
     RecordQueue::Batch batch = queue_.take(kPatience);
     closed = batch.closed;
     if (batch.events_dropped > 0) {
-      batch.records.emplace_back(storage::Loss{now(), "events dropped: the queue to the logbook was full", batch.events_dropped});
+      batch.records.emplace_back(
+          storage::Loss{now(), "events dropped: the queue to the logbook was full", batch.events_dropped});
     }
     if (batch.details_dropped > 0) {
-      batch.records.emplace_back(storage::Loss{now(), "aggregates or waveforms dropped: the queue to the logbook was full", batch.details_dropped});
+      batch.records.emplace_back(
+          storage::Loss{now(), "aggregates or waveforms dropped: the queue to the logbook was full",
+                        batch.details_dropped});
     }
     std::move(batch.records.begin(), batch.records.end(), std::back_inserter(waiting_));
 
@@ -67,12 +73,14 @@ void WriterThread::run() {
 }
 
 bool WriterThread::write(std::vector<storage::Record>& records) {
-  if (dropped_ > 0) records.emplace_back(storage::Loss{now(), "records dropped: the logbook could not be written", dropped_});
+  if (dropped_ > 0)
+    records.emplace_back(storage::Loss{now(), "records dropped: the logbook could not be written", dropped_});
   const bool adds_loss = dropped_ > 0;
   const auto written = logbook_.write(records);
   if (!written) {
     if (adds_loss) records.pop_back();
-    if (writing_.exchange(false)) tell_(true, written.error().text() + "; measuring goes on, records wait in memory");
+    if (writing_.exchange(false))
+      tell_(true, written.error().text() + "; measuring goes on, records wait in memory");
     return false;
   }
   if (!writing_.exchange(true)) tell_(false, "the logbook is written again");
@@ -85,13 +93,15 @@ void WriterThread::keep_waiting(std::vector<storage::Record>& records) {
   // Details go first, then the oldest events.
   const auto is_event = [](const storage::Record& r) {
     return std::holds_alternative<storage::Event>(r) || std::holds_alternative<storage::CoverageBegin>(r) ||
-           std::holds_alternative<storage::CoverageEnd>(r) || std::holds_alternative<storage::SessionBegin>(r) ||
+           std::holds_alternative<storage::CoverageEnd>(r) ||
+           std::holds_alternative<storage::SessionBegin>(r) ||
            std::holds_alternative<storage::SessionEnd>(r) || std::holds_alternative<storage::Loss>(r);
   };
   const std::size_t before = records.size();
   std::erase_if(records, [&](const storage::Record& r) { return !is_event(r); });
   if (records.size() > kMostWaiting) {
-    records.erase(records.begin(), records.begin() + static_cast<std::ptrdiff_t>(records.size() - kMostWaiting));
+    records.erase(records.begin(),
+                  records.begin() + static_cast<std::ptrdiff_t>(records.size() - kMostWaiting));
   }
   dropped_ += static_cast<std::int64_t>(before - records.size());
 }

@@ -14,17 +14,20 @@
 
 namespace tramline {
 
-/// Writes the records from the queue to the logbook, on a thread of its own, so that measuring never waits for the disk.
+/// Writes the records from the queue to the logbook, on a thread of its own, so that measuring never waits
+/// for the disk.
 ///
-/// Events are written as they come and are durable when the write returns; details are committed once a minute. While
-/// writing fails (a full disk), records wait in bounded memory, the details being dropped first and counted, and the
-/// write is tried again every few seconds. Once an hour old detail is pruned by the site's limits.
+/// Events are written as they come and are durable when the write returns; details are committed once a
+/// minute. While writing fails (a full disk), records wait in bounded memory, the details being dropped first
+/// and counted, and the write is tried again every few seconds. Once an hour old detail is pruned by the
+/// site's limits.
 class WriterThread {
  public:
   /// What the thread has to say, for the log; called on the thread.
   using Tell = std::function<void(bool trouble, const std::string& words)>;
 
-  WriterThread(storage::LogbookWriter logbook, config::LogbookSettings settings, RecordQueue& queue, Tell tell);
+  WriterThread(storage::LogbookWriter logbook, config::LogbookSettings settings, RecordQueue& queue,
+               Tell tell);
   /// Closes the queue, writes what is in it, and joins.
   ~WriterThread();
   WriterThread(const WriterThread&) = delete;

@@ -28,8 +28,11 @@ ClockState clock_of(const Statement& row, int at) {
 constexpr std::size_t kMostSamples = 50'000'000;
 
 constexpr const char* kEventColumns =
-    "SELECT id,session,side,kind,begin_sample,begin_ns,begin_window_end_ns,end_reason,end_ns,end_window_end_ns,duration_ns,phases,"
-    "worst_phase,extreme_v,extreme_is_bound,reference_v,threshold_v,hysteresis_v,origin,reason,held_off,input_low_v,input_high_v,"
+    "SELECT "
+    "id,session,side,kind,begin_sample,begin_ns,begin_window_end_ns,end_reason,end_ns,end_window_end_ns,"
+    "duration_ns,phases,"
+    "worst_phase,extreme_v,extreme_is_bound,reference_v,threshold_v,hysteresis_v,origin,reason,held_off,"
+    "input_low_v,input_high_v,"
     "ratio_low,ratio_high,clock_synchronised,clock_error_bound_ns FROM event ";
 
 bool event_of(const Statement& row, EventRow& out) {
@@ -64,12 +67,14 @@ bool event_of(const Statement& row, EventRow& out) {
 Result<LogbookReader> LogbookReader::open(const std::string& path) {
   std::error_code code;
   if (!std::filesystem::exists(path, code)) return Error{path, "there is no such logbook", "check the path"};
-  if (std::filesystem::is_directory(path, code)) return Error{path, "this is a folder", "name the logbook in it"};
+  if (std::filesystem::is_directory(path, code))
+    return Error{path, "this is a folder", "name the logbook in it"};
   std::ifstream file(path, std::ios::binary);
   if (!file) return Error{path, "the logbook cannot be read", "check its permissions"};
   std::string head(15, '\0');
   file.read(head.data(), static_cast<std::streamsize>(head.size()));
-  if (head != "SQLite format 3") return Error{path, "this is no logbook: not an SQLite file", "name a logbook"};
+  if (head != "SQLite format 3")
+    return Error{path, "this is no logbook: not an SQLite file", "name a logbook"};
 
   auto database = Database::open(path, Database::Mode::read_only);
   if (!database) return database.error();
@@ -89,20 +94,24 @@ Status LogbookReader::each(const std::string& sql, const Period& period, const c
     if (!more) return more.error();
     if (!more.value()) return kDone;
     if (!take_row(s)) {
-      return Error{database_.path(), std::string("table ") + table + " holds a value that no record can have", "the file is damaged or was altered"};
+      return Error{database_.path(), std::string("table ") + table + " holds a value that no record can have",
+                   "the file is damaged or was altered"};
     }
   }
 }
 
 Result<std::vector<Session>> LogbookReader::sessions() const {
   std::vector<Session> found;
-  auto done = each("SELECT id,program,source,rate_hz,dated,begin_ns,why_ended FROM session WHERE ?1<=?2 ORDER BY id", {}, "session",
-                   [&](const Statement& row) {
-                     Session session{row.integer(0), {row.text(1), row.text(2), row.number(3), row.integer(4) != 0, {row.integer(5)}}, {}};
-                     if (!row.is_null(6)) session.why_ended = row.text(6);
-                     found.push_back(std::move(session));
-                     return true;
-                   });
+  auto done =
+      each("SELECT id,program,source,rate_hz,dated,begin_ns,why_ended FROM session WHERE ?1<=?2 ORDER BY id",
+           {}, "session", [&](const Statement& row) {
+             Session session{row.integer(0),
+                             {row.text(1), row.text(2), row.number(3), row.integer(4) != 0, {row.integer(5)}},
+                             {}};
+             if (!row.is_null(6)) session.why_ended = row.text(6);
+             found.push_back(std::move(session));
+             return true;
+           });
   if (!done) return done.error();
   return found;
 }
@@ -110,9 +119,11 @@ Result<std::vector<Session>> LogbookReader::sessions() const {
 Result<std::vector<CoverageStretch>> LogbookReader::coverage(const Period& period) const {
   std::vector<CoverageStretch> found;
   auto done = each(
-      "SELECT session,begin_ns,until_ns,measured_ns,why_begun,why_ended FROM coverage WHERE until_ns>?1 AND begin_ns<?2 ORDER BY begin_ns",
+      "SELECT session,begin_ns,until_ns,measured_ns,why_begun,why_ended FROM coverage WHERE until_ns>?1 AND "
+      "begin_ns<?2 ORDER BY begin_ns",
       period, "coverage", [&](const Statement& row) {
-        CoverageStretch stretch{row.integer(0), {row.integer(1)}, {row.integer(2)}, row.integer(3), row.text(4), {}};
+        CoverageStretch stretch{row.integer(0), {row.integer(1)}, {row.integer(2)},
+                                row.integer(3), row.text(4),      {}};
         if (!row.is_null(5)) stretch.why_ended = row.text(5);
         found.push_back(std::move(stretch));
         return true;
@@ -123,9 +134,9 @@ Result<std::vector<CoverageStretch>> LogbookReader::coverage(const Period& perio
 
 Result<std::vector<EventRow>> LogbookReader::events(const Period& period) const {
   std::vector<EventRow> found;
-  auto done = each(std::string(kEventColumns) + "WHERE end_ns>=?1 AND begin_ns<?2 ORDER BY begin_ns,id", period, "event", [&](const Statement& row) {
-    return event_of(row, found.emplace_back());
-  });
+  auto done =
+      each(std::string(kEventColumns) + "WHERE end_ns>=?1 AND begin_ns<?2 ORDER BY begin_ns,id", period,
+           "event", [&](const Statement& row) { return event_of(row, found.emplace_back()); });
   if (!done) return done.error();
   return found;
 }
@@ -139,7 +150,8 @@ Result<std::optional<EventRow>> LogbookReader::event(std::int64_t id) const {
   if (!row.value()) return std::optional<EventRow>();
   EventRow found;
   if (!event_of(statement.value(), found)) {
-    return Error{database_.path(), "table event holds a value that no record can have", "the file is damaged or was altered"};
+    return Error{database_.path(), "table event holds a value that no record can have",
+                 "the file is damaged or was altered"};
   }
   return std::optional<EventRow>(std::move(found));
 }
@@ -147,9 +159,12 @@ Result<std::optional<EventRow>> LogbookReader::event(std::int64_t id) const {
 Result<std::vector<Aggregate>> LogbookReader::aggregates(Interval interval, const Period& period) const {
   std::vector<Aggregate> found;
   const std::string sql =
-      "SELECT side,phase,begin_ns,end_ns,u_rms_v,u_min_v,u_max_v,blocks,measured_ns,flagged,partial,over_range,clock_synchronised,"
+      "SELECT "
+      "side,phase,begin_ns,end_ns,u_rms_v,u_min_v,u_max_v,blocks,measured_ns,flagged,partial,over_range,"
+      "clock_synchronised,"
       "clock_error_bound_ns FROM aggregate WHERE interval=" +
-      std::to_string(static_cast<int>(interval)) + " AND end_ns>?1 AND begin_ns<?2 ORDER BY begin_ns,session,side,phase";
+      std::to_string(static_cast<int>(interval)) +
+      " AND end_ns>?1 AND begin_ns<?2 ORDER BY begin_ns,session,side,phase";
   auto done = each(sql, period, "aggregate", [&](const Statement& row) {
     Aggregate& a = found.emplace_back();
     a.interval = interval;
@@ -173,11 +188,17 @@ Result<std::vector<Aggregate>> LogbookReader::aggregates(Interval interval, cons
 Result<std::vector<Frequency>> LogbookReader::frequencies(const Period& period) const {
   std::vector<Frequency> found;
   auto done = each(
-      "SELECT begin_ns,end_ns,hz,cycles,trusted,flagged,clock_synchronised,clock_error_bound_ns FROM frequency "
+      "SELECT begin_ns,end_ns,hz,cycles,trusted,flagged,clock_synchronised,clock_error_bound_ns FROM "
+      "frequency "
       "WHERE end_ns>?1 AND begin_ns<?2 ORDER BY begin_ns,session",
       period, "frequency", [&](const Statement& row) {
-        found.push_back({{row.integer(0)}, {row.integer(1)}, row.number(2), static_cast<std::int32_t>(row.integer(3)), row.integer(4) != 0,
-                         row.integer(5) != 0, clock_of(row, 6)});
+        found.push_back({{row.integer(0)},
+                         {row.integer(1)},
+                         row.number(2),
+                         static_cast<std::int32_t>(row.integer(3)),
+                         row.integer(4) != 0,
+                         row.integer(5) != 0,
+                         clock_of(row, 6)});
         return true;
       });
   if (!done) return done.error();
@@ -187,8 +208,11 @@ Result<std::vector<Frequency>> LogbookReader::frequencies(const Period& period) 
 Result<std::vector<RegulatorInterval>> LogbookReader::regulator_intervals(const Period& period) const {
   std::vector<RegulatorInterval> found;
   auto done = each(
-      "SELECT phase,begin_ns,end_ns,input_half_cycles,output_half_cycles,input_in_band,output_in_band,output_low,output_high,pairs,"
-      "correctable,ratio_min,ratio_mean,ratio_max,corrections,reversals,travel,speed_v_per_s,partial FROM regulator_interval "
+      "SELECT "
+      "phase,begin_ns,end_ns,input_half_cycles,output_half_cycles,input_in_band,output_in_band,output_low,"
+      "output_high,pairs,"
+      "correctable,ratio_min,ratio_mean,ratio_max,corrections,reversals,travel,speed_v_per_s,partial FROM "
+      "regulator_interval "
       "WHERE end_ns>?1 AND begin_ns<?2 ORDER BY begin_ns,session,phase",
       period, "regulator_interval", [&](const Statement& row) {
         RegulatorInterval& r = found.emplace_back();
@@ -237,8 +261,8 @@ Result<std::vector<Correction>> LogbookReader::corrections(const Period& period)
 
 Result<std::vector<WaveformRow>> LogbookReader::waveforms(std::int64_t session, const Period& period) const {
   std::vector<WaveformRow> found;
-  auto done = each("SELECT id,begin_ns,end_ns FROM waveform WHERE end_ns>=?1 AND begin_ns<=?2 AND session=" + std::to_string(session) +
-                       " ORDER BY begin_ns",
+  auto done = each("SELECT id,begin_ns,end_ns FROM waveform WHERE end_ns>=?1 AND begin_ns<=?2 AND session=" +
+                       std::to_string(session) + " ORDER BY begin_ns",
                    period, "waveform", [&](const Statement& row) {
                      found.push_back({row.integer(0), {row.integer(1)}, {row.integer(2)}});
                      return true;
@@ -250,32 +274,35 @@ Result<std::vector<WaveformRow>> LogbookReader::waveforms(std::int64_t session, 
 Result<Waveform> LogbookReader::waveform(std::int64_t id) const {
   Waveform waveform;
   bool known = false;
-  auto done = each("SELECT begin_sample,begin_ns,end_ns,rate_hz FROM waveform WHERE ?1<=?2 AND id=" + std::to_string(id), {}, "waveform",
-                   [&](const Statement& row) {
-                     known = true;
-                     waveform.begin_sample = {row.integer(0)};
-                     waveform.begin = {row.integer(1)};
-                     waveform.end = {row.integer(2)};
-                     waveform.rate_hz = row.number(3);
-                     return waveform.rate_hz > 0.0 && std::isfinite(waveform.rate_hz);
-                   });
+  auto done = each(
+      "SELECT begin_sample,begin_ns,end_ns,rate_hz FROM waveform WHERE ?1<=?2 AND id=" + std::to_string(id),
+      {}, "waveform", [&](const Statement& row) {
+        known = true;
+        waveform.begin_sample = {row.integer(0)};
+        waveform.begin = {row.integer(1)};
+        waveform.end = {row.integer(2)};
+        waveform.rate_hz = row.number(3);
+        return waveform.rate_hz > 0.0 && std::isfinite(waveform.rate_hz);
+      });
   if (!done) return done.error();
   if (!known) return Error{database_.path(), "there is no waveform with number " + std::to_string(id), ""};
 
-  done = each("SELECT side,phase,volts_per_step,steps FROM trace WHERE ?1<=?2 AND waveform=" + std::to_string(id) + " ORDER BY side,phase", {},
-              "trace", [&](const Statement& row) {
-                Waveform::Trace& trace = waveform.traces.emplace_back();
-                trace.volts_per_step = static_cast<float>(row.number(2));
-                const auto bytes = row.blob(3);
-                if (bytes.size() / 2 > kMostSamples || !std::isfinite(trace.volts_per_step)) return false;
-                trace.steps.reserve(bytes.size() / 2);
-                for (std::size_t i = 0; i + 1 < bytes.size(); i += 2) {
-                  const unsigned bits = bytes[i] | static_cast<unsigned>(bytes[i + 1]) << 8U;
-                  trace.steps.push_back(static_cast<std::int16_t>(static_cast<std::uint16_t>(bits)));
-                }
-                const bool same_length = trace.steps.size() == waveform.traces.front().steps.size();
-                return same_length && take(row, 0, 2, trace.channel.side) && take(row, 1, 3, trace.channel.phase);
-              });
+  done = each(
+      "SELECT side,phase,volts_per_step,steps FROM trace WHERE ?1<=?2 AND waveform=" + std::to_string(id) +
+          " ORDER BY side,phase",
+      {}, "trace", [&](const Statement& row) {
+        Waveform::Trace& trace = waveform.traces.emplace_back();
+        trace.volts_per_step = static_cast<float>(row.number(2));
+        const auto bytes = row.blob(3);
+        if (bytes.size() / 2 > kMostSamples || !std::isfinite(trace.volts_per_step)) return false;
+        trace.steps.reserve(bytes.size() / 2);
+        for (std::size_t i = 0; i + 1 < bytes.size(); i += 2) {
+          const unsigned bits = bytes[i] | static_cast<unsigned>(bytes[i + 1]) << 8U;
+          trace.steps.push_back(static_cast<std::int16_t>(static_cast<std::uint16_t>(bits)));
+        }
+        const bool same_length = trace.steps.size() == waveform.traces.front().steps.size();
+        return same_length && take(row, 0, 2, trace.channel.side) && take(row, 1, 3, trace.channel.phase);
+      });
   if (!done) return done.error();
   return waveform;
 }
@@ -283,8 +310,9 @@ Result<Waveform> LogbookReader::waveform(std::int64_t id) const {
 Result<std::vector<ClockChange>> LogbookReader::clock_changes(const Period& period) const {
   std::vector<ClockChange> found;
   auto done = each(
-      "SELECT at_ns,what,step_ns,clock_synchronised,clock_error_bound_ns FROM clock_change WHERE at_ns>=?1 AND at_ns<?2 ORDER BY at_ns,id", period,
-      "clock_change", [&](const Statement& row) {
+      "SELECT at_ns,what,step_ns,clock_synchronised,clock_error_bound_ns FROM clock_change WHERE at_ns>=?1 "
+      "AND at_ns<?2 ORDER BY at_ns,id",
+      period, "clock_change", [&](const Statement& row) {
         found.push_back({{row.integer(0)}, row.text(1), row.integer(2), clock_of(row, 3)});
         return true;
       });
@@ -295,31 +323,35 @@ Result<std::vector<ClockChange>> LogbookReader::clock_changes(const Period& peri
 Result<std::optional<std::string>> LogbookReader::settings(std::optional<UtcNs> at) const {
   std::optional<std::string> text;
   const Period until{std::nullopt, at};
-  auto done = each("SELECT text,from_ns FROM settings WHERE ?1<=?2 ORDER BY (from_ns<=?2) DESC, CASE WHEN from_ns<=?2 THEN -id ELSE id END LIMIT 1", until,
-                   "settings", [&](const Statement& row) {
-                     text = row.text(0);
-                     return true;
-                   });
+  auto done = each(
+      "SELECT text,from_ns FROM settings WHERE ?1<=?2 ORDER BY (from_ns<=?2) DESC, CASE WHEN from_ns<=?2 "
+      "THEN -id ELSE id END LIMIT 1",
+      until, "settings", [&](const Statement& row) {
+        text = row.text(0);
+        return true;
+      });
   if (!done) return done.error();
   return text;
 }
 
 Result<std::vector<Loss>> LogbookReader::losses() const {
   std::vector<Loss> found;
-  auto done = each("SELECT at_ns,what,count FROM loss WHERE ?1<=?2 ORDER BY id", {}, "loss", [&](const Statement& row) {
-    found.push_back({{row.integer(0)}, row.text(1), row.integer(2)});
-    return true;
-  });
+  auto done = each("SELECT at_ns,what,count FROM loss WHERE ?1<=?2 ORDER BY id", {}, "loss",
+                   [&](const Statement& row) {
+                     found.push_back({{row.integer(0)}, row.text(1), row.integer(2)});
+                     return true;
+                   });
   if (!done) return done.error();
   return found;
 }
 
 Result<std::vector<PrunedDetail>> LogbookReader::pruned() const {
   std::vector<PrunedDetail> found;
-  auto done = each("SELECT what,until_ns,rows FROM pruned WHERE ?1<=?2 ORDER BY what", {}, "pruned", [&](const Statement& row) {
-    found.push_back({row.text(0), {row.integer(1)}, row.integer(2)});
-    return true;
-  });
+  auto done = each("SELECT what,until_ns,rows FROM pruned WHERE ?1<=?2 ORDER BY what", {}, "pruned",
+                   [&](const Statement& row) {
+                     found.push_back({row.text(0), {row.integer(1)}, row.integer(2)});
+                     return true;
+                   });
   if (!done) return done.error();
   return found;
 }

@@ -53,8 +53,9 @@ struct PrunedDetail {
   std::int64_t rows = 0;
 };
 
-/// Reads a logbook, also while the daemon writes it. Everything comes in the order of time. What a stranger may have put into
-/// the file is checked; a value that no record can hold is an Error with its table. One thread.
+/// Reads a logbook, also while the daemon writes it. Everything comes in the order of time. What a stranger
+/// may have put into the file is checked; a value that no record can hold is an Error with its table. One
+/// thread.
 class LogbookReader {
  public:
   [[nodiscard]] static Result<LogbookReader> open(const std::string& path);
@@ -72,7 +73,8 @@ class LogbookReader {
   [[nodiscard]] Result<std::vector<WaveformRow>> waveforms(std::int64_t session, const Period& period) const;
   [[nodiscard]] Result<Waveform> waveform(std::int64_t id) const;
   [[nodiscard]] Result<std::vector<ClockChange>> clock_changes(const Period& period) const;
-  /// The site file in force at `at` (the last one before it, else the first); nothing if the logbook holds none.
+  /// The site file in force at `at` (the last one before it, else the first); nothing if the logbook holds
+  /// none.
   [[nodiscard]] Result<std::optional<std::string>> settings(std::optional<UtcNs> at) const;
   [[nodiscard]] Result<std::vector<Loss>> losses() const;
   [[nodiscard]] Result<std::vector<PrunedDetail>> pruned() const;

@@ -28,8 +28,12 @@ bool is_detail(const Record& record) {
          std::holds_alternative<Waveform>(record) || std::holds_alternative<CoverageProgress>(record);
 }
 
-std::int64_t number_of(Side side) { return static_cast<std::int64_t>(side); }
-std::int64_t number_of(Phase phase) { return static_cast<std::int64_t>(phase); }
+std::int64_t number_of(Side side) {
+  return static_cast<std::int64_t>(side);
+}
+std::int64_t number_of(Phase phase) {
+  return static_cast<std::int64_t>(phase);
+}
 
 void bind(Statement& statement, int at, const ClockState& clock) {
   statement.bind(at, std::int64_t{clock.synchronised});
@@ -72,7 +76,8 @@ Result<std::string> set_aside(const std::string& path, UtcNs now) {
   const std::string to = path + ".damaged-" + std::to_string(now.value);
   std::error_code code;
   fs::rename(path, to, code);
-  if (code) return Error{path, "the damaged logbook cannot be set aside: " + code.message(), "move it away by hand"};
+  if (code)
+    return Error{path, "the damaged logbook cannot be set aside: " + code.message(), "move it away by hand"};
   for (const char* suffix : {"-wal", "-shm"}) {
     std::error_code ignored;  // they need not be there
     fs::rename(path + suffix, to + suffix, ignored);
@@ -87,7 +92,8 @@ Status check_whole(const Database& database) {
   const auto row = check.value().step();
   if (!row) return row.error();
   if (row.value() && check.value().text(0) == "ok") return kDone;
-  return Error{database.path(), "the logbook is damaged: " + check.value().text(0), "keep a copy, and name a new file"};
+  return Error{database.path(), "the logbook is damaged: " + check.value().text(0),
+               "keep a copy, and name a new file"};
 }
 
 }  // namespace
@@ -105,9 +111,9 @@ struct LogbookWriter::Inside {
   Place place;
   std::vector<Record> waiting;
 
-  Statement insert_session, end_session, insert_coverage, extend_coverage, end_coverage, put_event, put_aggregate, put_frequency,
-      put_regulator_interval, put_correction, insert_waveform, insert_trace, insert_clock_change, last_settings, insert_settings,
-      insert_loss;
+  Statement insert_session, end_session, insert_coverage, extend_coverage, end_coverage, put_event,
+      put_aggregate, put_frequency, put_regulator_interval, put_correction, insert_waveform, insert_trace,
+      insert_clock_change, last_settings, insert_settings, insert_loss;
 
   explicit Inside(Database opened) : database(std::move(opened)) {}
 
@@ -131,14 +137,16 @@ struct LogbookWriter::Inside {
 
 Status LogbookWriter::Inside::set_up() {
   // auto_vacuum must come before the first table; WAL is kept by the file.
-  for (const char* sql : {"PRAGMA auto_vacuum=INCREMENTAL", "PRAGMA journal_mode=WAL", "PRAGMA synchronous=FULL", "PRAGMA foreign_keys=ON",
-                          "PRAGMA journal_size_limit=4194304"}) {
+  for (const char* sql :
+       {"PRAGMA auto_vacuum=INCREMENTAL", "PRAGMA journal_mode=WAL", "PRAGMA synchronous=FULL",
+        "PRAGMA foreign_keys=ON", "PRAGMA journal_size_limit=4194304"}) {
     if (auto done = database.execute(sql); !done) return done;
   }
   const auto tables = database.integer_of("SELECT count(*) FROM sqlite_schema");
   if (!tables) return tables.error();
   if (tables.value() == 0) {
-    if (auto done = database.execute("PRAGMA application_id=" + std::to_string(kApplicationId)); !done) return done;
+    if (auto done = database.execute("PRAGMA application_id=" + std::to_string(kApplicationId)); !done)
+      return done;
   }
   if (auto known = check_identity(database); !known) return known;
   return migrate(database, migrations());
@@ -148,27 +156,38 @@ Status LogbookWriter::Inside::prepare() {
   const std::pair<Statement*, const char*> all[] = {
       {&insert_session, "INSERT INTO session(program,source,rate_hz,dated,begin_ns) VALUES(?,?,?,?,?)"},
       {&end_session, "UPDATE session SET why_ended=?2 WHERE id=?1"},
-      {&insert_coverage, "INSERT INTO coverage(session,begin_sample,begin_ns,until_ns,measured_ns,why_begun) VALUES(?1,?2,?3,?3,0,?4)"},
+      {&insert_coverage,
+       "INSERT INTO coverage(session,begin_sample,begin_ns,until_ns,measured_ns,why_begun) "
+       "VALUES(?1,?2,?3,?3,0,?4)"},
       {&extend_coverage, "UPDATE coverage SET until_ns=?2,measured_ns=?3 WHERE id=?1"},
       {&end_coverage, "UPDATE coverage SET until_ns=?2,measured_ns=?3,why_ended=?4 WHERE id=?1"},
       {&put_event,
-       "INSERT INTO event(session,side,kind,begin_sample,phase_key,begin_ns,begin_window_end_ns,end_reason,end_ns,end_window_end_ns,"
-       "duration_ns,phases,worst_phase,extreme_v,extreme_is_bound,reference_v,threshold_v,hysteresis_v,origin,reason,held_off,"
+       "INSERT INTO "
+       "event(session,side,kind,begin_sample,phase_key,begin_ns,begin_window_end_ns,end_reason,end_ns,end_"
+       "window_end_ns,"
+       "duration_ns,phases,worst_phase,extreme_v,extreme_is_bound,reference_v,threshold_v,hysteresis_v,"
+       "origin,reason,held_off,"
        "input_low_v,input_high_v,ratio_low,ratio_high,clock_synchronised,clock_error_bound_ns) "
        "VALUES(?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?) "
-       "ON CONFLICT(session,side,kind,begin_sample,phase_key) DO UPDATE SET end_reason=excluded.end_reason,end_ns=excluded.end_ns,"
+       "ON CONFLICT(session,side,kind,begin_sample,phase_key) DO UPDATE SET "
+       "end_reason=excluded.end_reason,end_ns=excluded.end_ns,"
        "end_window_end_ns=excluded.end_window_end_ns,duration_ns=excluded.duration_ns,phases=excluded.phases,"
-       "worst_phase=excluded.worst_phase,extreme_v=excluded.extreme_v,extreme_is_bound=excluded.extreme_is_bound,"
-       "origin=excluded.origin,reason=excluded.reason,held_off=excluded.held_off,input_low_v=excluded.input_low_v,"
+       "worst_phase=excluded.worst_phase,extreme_v=excluded.extreme_v,extreme_is_bound=excluded.extreme_is_"
+       "bound,"
+       "origin=excluded.origin,reason=excluded.reason,held_off=excluded.held_off,input_low_v=excluded.input_"
+       "low_v,"
        "input_high_v=excluded.input_high_v,ratio_low=excluded.ratio_low,ratio_high=excluded.ratio_high"},
       {&put_aggregate, "INSERT OR REPLACE INTO aggregate VALUES(?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?)"},
       {&put_frequency, "INSERT OR REPLACE INTO frequency VALUES(?,?,?,?,?,?,?,?,?)"},
-      {&put_regulator_interval, "INSERT OR REPLACE INTO regulator_interval VALUES(?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?)"},
+      {&put_regulator_interval,
+       "INSERT OR REPLACE INTO regulator_interval VALUES(?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?)"},
       {&put_correction, "INSERT OR REPLACE INTO correction VALUES(?,?,?,?,?,?,?,?)"},
-      {&insert_waveform, "INSERT INTO waveform(session,begin_sample,begin_ns,end_ns,rate_hz) VALUES(?,?,?,?,?)"},
+      {&insert_waveform,
+       "INSERT INTO waveform(session,begin_sample,begin_ns,end_ns,rate_hz) VALUES(?,?,?,?,?)"},
       {&insert_trace, "INSERT INTO trace VALUES(?,?,?,?,?)"},
       {&insert_clock_change,
-       "INSERT INTO clock_change(session,at_ns,what,step_ns,clock_synchronised,clock_error_bound_ns) VALUES(?,?,?,?,?,?)"},
+       "INSERT INTO clock_change(session,at_ns,what,step_ns,clock_synchronised,clock_error_bound_ns) "
+       "VALUES(?,?,?,?,?,?)"},
       {&last_settings, "SELECT text FROM settings ORDER BY id DESC LIMIT 1"},
       {&insert_settings, "INSERT INTO settings(session,from_ns,text) VALUES(?,?,?)"},
       {&insert_loss, "INSERT INTO loss(at_ns,what,count) VALUES(?,?,?)"},
@@ -189,9 +208,12 @@ Status LogbookWriter::Inside::close_what_was_left_open() {
   auto transaction = Transaction::begin(database);
   if (!transaction) return transaction.error();
   // The last time known of a session is how far its coverage reached.
-  const std::string known = "max(begin_ns, coalesce((SELECT max(until_ns) FROM coverage WHERE coverage.session=event.session), begin_ns))";
-  auto close = database.prepare("UPDATE event SET end_reason=?1,end_ns=" + known + ",end_window_end_ns=" + known + ",duration_ns=" + known +
-                                "-begin_ns WHERE end_reason=0");
+  const std::string known =
+      "max(begin_ns, coalesce((SELECT max(until_ns) FROM coverage WHERE coverage.session=event.session), "
+      "begin_ns))";
+  auto close =
+      database.prepare("UPDATE event SET end_reason=?1,end_ns=" + known + ",end_window_end_ns=" + known +
+                       ",duration_ns=" + known + "-begin_ns WHERE end_reason=0");
   if (!close) return close.error();
   close.value().bind(1, static_cast<std::int64_t>(EventEnd::cut_off));
   if (auto done = close.value().run(); !done) return done;
@@ -202,8 +224,12 @@ Status LogbookWriter::Inside::close_what_was_left_open() {
     if (auto done = end.value().run(); !done) return done;
   }
   if (auto done = transaction.value().commit(); !done) return done;
-  if (events.value() > 0) remarks.push_back(std::to_string(events.value()) + " events left open by an earlier run are closed as cut off");
-  if (stretches.value() > 0) remarks.emplace_back("an earlier run stopped without notice; its coverage is ended where it was last known");
+  if (events.value() > 0)
+    remarks.push_back(std::to_string(events.value()) +
+                      " events left open by an earlier run are closed as cut off");
+  if (stretches.value() > 0)
+    remarks.emplace_back(
+        "an earlier run stopped without notice; its coverage is ended where it was last known");
   return kDone;
 }
 
@@ -214,7 +240,9 @@ LogbookWriter::~LogbookWriter() {
   if (inside_) (void)flush();
 }
 
-const std::vector<std::string>& LogbookWriter::opening_remarks() const { return inside_->remarks; }
+const std::vector<std::string>& LogbookWriter::opening_remarks() const {
+  return inside_->remarks;
+}
 
 Result<LogbookWriter> LogbookWriter::open(const std::string& path, const OpenOptions& options) {
   std::optional<Loss> damage;
@@ -222,14 +250,18 @@ Result<LogbookWriter> LogbookWriter::open(const std::string& path, const OpenOpt
     if (!options.set_aside_damaged) return why;
     const auto to = set_aside(path, options.now);
     if (!to) return to.error();
-    damage = Loss{options.now, "the logbook before this one was damaged and is set aside as " + to.value() + " (" + why.what + ")", 1};
+    damage = Loss{
+        options.now,
+        "the logbook before this one was damaged and is set aside as " + to.value() + " (" + why.what + ")",
+        1};
     return kDone;
   };
 
   const auto found = look_at(path);
   if (!found) return found.error();
   if (found.value() == Found::something_else) {
-    const Error no_logbook{path, "this is no logbook: not an SQLite file", "name another file; this one was not touched"};
+    const Error no_logbook{path, "this is no logbook: not an SQLite file",
+                           "name another file; this one was not touched"};
     if (auto done = make_room(no_logbook); !done) return done.error();
   }
   auto database = Database::open(path, Database::Mode::read_write_create);
@@ -259,8 +291,9 @@ Result<LogbookWriter> LogbookWriter::open(const std::string& path, const OpenOpt
 }
 
 Status LogbookWriter::write(std::vector<Record>& records) {
-  const bool urgent = !inside_->in_large_batches &&
-                      std::any_of(records.begin(), records.end(), [](const Record& record) { return !is_detail(record); });
+  const bool urgent =
+      !inside_->in_large_batches &&
+      std::any_of(records.begin(), records.end(), [](const Record& record) { return !is_detail(record); });
   if (urgent || inside_->waiting.size() + records.size() > kMostWaiting) return inside_->store_all(records);
   std::move(records.begin(), records.end(), std::back_inserter(inside_->waiting));
   records.clear();
@@ -291,7 +324,9 @@ Status LogbookWriter::Inside::store_all(std::vector<Record>& records) {
 
 Status LogbookWriter::Inside::store_any(const Record& record, Place& at) {
   if (const auto* begin = std::get_if<SessionBegin>(&record)) {
-    insert_session.bind(1, std::string_view(begin->program)).bind(2, std::string_view(begin->source)).bind(3, begin->rate_hz);
+    insert_session.bind(1, std::string_view(begin->program))
+        .bind(2, std::string_view(begin->source))
+        .bind(3, begin->rate_hz);
     insert_session.bind(4, std::int64_t{begin->dated}).bind(5, begin->begin.value);
     if (auto done = insert_session.run(); !done) return done;
     at.session = database.last_row_id();
@@ -299,22 +334,32 @@ Status LogbookWriter::Inside::store_any(const Record& record, Place& at) {
     return kDone;
   }
   if (at.session == 0 && !std::holds_alternative<Loss>(record)) {
-    return Error{database.path(), "a record came before its session began", "this is a fault of the program; please report it"};
+    return Error{database.path(), "a record came before its session began",
+                 "this is a fault of the program; please report it"};
   }
   if (const auto* end = std::get_if<SessionEnd>(&record)) {
     return end_session.bind(1, at.session).bind(2, std::string_view(end->why)).run();
   }
   if (const auto* begin = std::get_if<CoverageBegin>(&record)) {
-    insert_coverage.bind(1, at.session).bind(2, begin->begin_sample.value).bind(3, begin->begin.value).bind(4, std::string_view(begin->why));
+    insert_coverage.bind(1, at.session)
+        .bind(2, begin->begin_sample.value)
+        .bind(3, begin->begin.value)
+        .bind(4, std::string_view(begin->why));
     if (auto done = insert_coverage.run(); !done) return done;
     at.coverage = database.last_row_id();
     return kDone;
   }
   if (const auto* progress = std::get_if<CoverageProgress>(&record)) {
-    return extend_coverage.bind(1, at.coverage).bind(2, progress->until.value).bind(3, progress->measured_ns).run();
+    return extend_coverage.bind(1, at.coverage)
+        .bind(2, progress->until.value)
+        .bind(3, progress->measured_ns)
+        .run();
   }
   if (const auto* end = std::get_if<CoverageEnd>(&record)) {
-    end_coverage.bind(1, at.coverage).bind(2, end->end.value).bind(3, end->measured_ns).bind(4, std::string_view(end->why));
+    end_coverage.bind(1, at.coverage)
+        .bind(2, end->end.value)
+        .bind(3, end->measured_ns)
+        .bind(4, std::string_view(end->why));
     return end_coverage.run();
   }
   if (const auto* event = std::get_if<Event>(&record)) return store(*event, at);
@@ -332,19 +377,29 @@ Status LogbookWriter::Inside::store(const Event& event, const Place& at) {
   // Each phase has excursions of its own; the other kinds are one event of a side.
   const std::int64_t phase_key = event.kind == EventKind::out_of_band ? number_of(event.worst_phase) : 0;
   Statement& s = put_event;
-  s.bind(1, at.session).bind(2, number_of(event.side)).bind(3, static_cast<std::int64_t>(event.kind)).bind(4, event.begin_sample.value);
+  s.bind(1, at.session)
+      .bind(2, number_of(event.side))
+      .bind(3, static_cast<std::int64_t>(event.kind))
+      .bind(4, event.begin_sample.value);
   s.bind(5, phase_key).bind(6, event.begin.value).bind(7, event.begin_window_end.value);
-  s.bind(8, static_cast<std::int64_t>(event.end_reason)).bind(9, event.end.value).bind(10, event.end_window_end.value);
+  s.bind(8, static_cast<std::int64_t>(event.end_reason))
+      .bind(9, event.end.value)
+      .bind(10, event.end_window_end.value);
   s.bind(11, event.duration_ns).bind(12, std::int64_t{event.phases}).bind(13, number_of(event.worst_phase));
   s.bind(14, event.extreme_v).bind(15, std::int64_t{event.extreme_is_bound}).bind(16, event.reference_v);
-  s.bind(17, event.threshold_v).bind(18, event.hysteresis_v).bind(19, static_cast<std::int64_t>(event.origin));
+  s.bind(17, event.threshold_v)
+      .bind(18, event.hysteresis_v)
+      .bind(19, static_cast<std::int64_t>(event.origin));
   s.bind(20, std::string_view(event.reason));
   if (event.held_off) {
     s.bind(21, std::int64_t{*event.held_off});
   } else {
     s.bind_null(21);
   }
-  s.bind(22, event.input_low_v).bind(23, event.input_high_v).bind(24, event.ratio_low).bind(25, event.ratio_high);
+  s.bind(22, event.input_low_v)
+      .bind(23, event.input_high_v)
+      .bind(24, event.ratio_low)
+      .bind(25, event.ratio_high);
   bind(s, 26, event.clock);
   return s.run();
 }
@@ -352,9 +407,16 @@ Status LogbookWriter::Inside::store(const Event& event, const Place& at) {
 Status LogbookWriter::Inside::store(const Aggregate& aggregate, const Place& at) {
   Statement& s = put_aggregate;
   s.bind(1, static_cast<std::int64_t>(aggregate.interval)).bind(2, aggregate.begin.value).bind(3, at.session);
-  s.bind(4, number_of(aggregate.channel.side)).bind(5, number_of(aggregate.channel.phase)).bind(6, aggregate.end.value);
-  s.bind(7, aggregate.u_rms_v).bind(8, aggregate.u_min_v).bind(9, aggregate.u_max_v).bind(10, std::int64_t{aggregate.blocks});
-  s.bind(11, aggregate.measured_ns).bind(12, std::int64_t{aggregate.flagged}).bind(13, std::int64_t{aggregate.partial});
+  s.bind(4, number_of(aggregate.channel.side))
+      .bind(5, number_of(aggregate.channel.phase))
+      .bind(6, aggregate.end.value);
+  s.bind(7, aggregate.u_rms_v)
+      .bind(8, aggregate.u_min_v)
+      .bind(9, aggregate.u_max_v)
+      .bind(10, std::int64_t{aggregate.blocks});
+  s.bind(11, aggregate.measured_ns)
+      .bind(12, std::int64_t{aggregate.flagged})
+      .bind(13, std::int64_t{aggregate.partial});
   s.bind(14, std::int64_t{aggregate.over_range});
   bind(s, 15, aggregate.clock);
   return s.run();
@@ -363,45 +425,71 @@ Status LogbookWriter::Inside::store(const Aggregate& aggregate, const Place& at)
 Status LogbookWriter::Inside::store(const Frequency& frequency, const Place& at) {
   Statement& s = put_frequency;
   s.bind(1, frequency.begin.value).bind(2, at.session).bind(3, frequency.end.value).bind(4, frequency.hz);
-  s.bind(5, std::int64_t{frequency.cycles}).bind(6, std::int64_t{frequency.trusted}).bind(7, std::int64_t{frequency.flagged});
+  s.bind(5, std::int64_t{frequency.cycles})
+      .bind(6, std::int64_t{frequency.trusted})
+      .bind(7, std::int64_t{frequency.flagged});
   bind(s, 8, frequency.clock);
   return s.run();
 }
 
 Status LogbookWriter::Inside::store(const RegulatorInterval& interval, const Place& at) {
   Statement& s = put_regulator_interval;
-  s.bind(1, interval.begin.value).bind(2, at.session).bind(3, number_of(interval.phase)).bind(4, interval.end.value);
+  s.bind(1, interval.begin.value)
+      .bind(2, at.session)
+      .bind(3, number_of(interval.phase))
+      .bind(4, interval.end.value);
   s.bind(5, interval.input_half_cycles).bind(6, interval.output_half_cycles).bind(7, interval.input_in_band);
-  s.bind(8, interval.output_in_band).bind(9, interval.output_low).bind(10, interval.output_high).bind(11, interval.pairs);
-  s.bind(12, interval.correctable).bind(13, interval.ratio_min).bind(14, interval.ratio_mean).bind(15, interval.ratio_max);
-  s.bind(16, std::int64_t{interval.corrections}).bind(17, std::int64_t{interval.reversals}).bind(18, interval.travel);
+  s.bind(8, interval.output_in_band)
+      .bind(9, interval.output_low)
+      .bind(10, interval.output_high)
+      .bind(11, interval.pairs);
+  s.bind(12, interval.correctable)
+      .bind(13, interval.ratio_min)
+      .bind(14, interval.ratio_mean)
+      .bind(15, interval.ratio_max);
+  s.bind(16, std::int64_t{interval.corrections})
+      .bind(17, std::int64_t{interval.reversals})
+      .bind(18, interval.travel);
   s.bind(19, interval.speed_v_per_s).bind(20, std::int64_t{interval.partial});
   return s.run();
 }
 
 Status LogbookWriter::Inside::store(const Correction& correction, const Place& at) {
   Statement& s = put_correction;
-  s.bind(1, correction.begin.value).bind(2, at.session).bind(3, number_of(correction.phase)).bind(4, correction.begin_sample.value);
-  s.bind(5, correction.end.value).bind(6, correction.ratio_before).bind(7, correction.ratio_after).bind(8, correction.speed_v_per_s);
+  s.bind(1, correction.begin.value)
+      .bind(2, at.session)
+      .bind(3, number_of(correction.phase))
+      .bind(4, correction.begin_sample.value);
+  s.bind(5, correction.end.value)
+      .bind(6, correction.ratio_before)
+      .bind(7, correction.ratio_after)
+      .bind(8, correction.speed_v_per_s);
   return s.run();
 }
 
 Status LogbookWriter::Inside::store(const Waveform& waveform, const Place& at) {
-  insert_waveform.bind(1, at.session).bind(2, waveform.begin_sample.value).bind(3, waveform.begin.value).bind(4, waveform.end.value);
+  insert_waveform.bind(1, at.session)
+      .bind(2, waveform.begin_sample.value)
+      .bind(3, waveform.begin.value)
+      .bind(4, waveform.end.value);
   insert_waveform.bind(5, waveform.rate_hz);
   if (auto done = insert_waveform.run(); !done) return done;
   const std::int64_t id = database.last_row_id();
   for (const Waveform::Trace& trace : waveform.traces) {
     const std::vector<std::uint8_t> bytes = little_endian(trace.steps);
     insert_trace.bind(1, id).bind(2, number_of(trace.channel.side)).bind(3, number_of(trace.channel.phase));
-    insert_trace.bind(4, static_cast<double>(trace.volts_per_step)).bind(5, std::span<const std::uint8_t>(bytes));
+    insert_trace.bind(4, static_cast<double>(trace.volts_per_step))
+        .bind(5, std::span<const std::uint8_t>(bytes));
     if (auto done = insert_trace.run(); !done) return done;
   }
   return kDone;
 }
 
 Status LogbookWriter::Inside::store(const ClockChange& change, const Place& at) {
-  insert_clock_change.bind(1, at.session).bind(2, change.at.value).bind(3, std::string_view(change.what)).bind(4, change.step_ns);
+  insert_clock_change.bind(1, at.session)
+      .bind(2, change.at.value)
+      .bind(3, std::string_view(change.what))
+      .bind(4, change.step_ns);
   bind(insert_clock_change, 5, change.after);
   return insert_clock_change.run();
 }
@@ -414,7 +502,10 @@ Status LogbookWriter::Inside::store(const SettingsInForce& settings, const Place
     if (auto done = last_settings.run(); !done) return done;
   }
   if (same) return kDone;
-  return insert_settings.bind(1, at.session).bind(2, settings.from.value).bind(3, std::string_view(settings.text)).run();
+  return insert_settings.bind(1, at.session)
+      .bind(2, settings.from.value)
+      .bind(3, std::string_view(settings.text))
+      .run();
 }
 
 Status LogbookWriter::Inside::store(const Loss& loss) {
@@ -429,7 +520,7 @@ namespace {
 struct Detail {
   const char* what;
   const char* table;
-  const char* condition;  // besides its age
+  const char* condition;                       // besides its age
   double config::LogbookSettings::*keep_days;  // nullptr: only for the budget
 };
 constexpr Detail kDetails[] = {
@@ -446,7 +537,8 @@ constexpr int kMostBudgetSteps = 4000;
 }  // namespace
 
 Result<std::int64_t> LogbookWriter::Inside::drop(const char* table, const char* condition, UtcNs before) {
-  auto statement = database.prepare(std::string("DELETE FROM ") + table + " WHERE " + condition + " AND begin_ns<?1");
+  auto statement =
+      database.prepare(std::string("DELETE FROM ") + table + " WHERE " + condition + " AND begin_ns<?1");
   if (!statement) return statement.error();
   statement.value().bind(1, before.value);
   if (auto done = statement.value().run(); !done) return done.error();
@@ -475,7 +567,8 @@ Result<Pruned> LogbookWriter::prune(UtcNs now, const config::LogbookSettings& se
     if (!rows) return rows.error();
     if (rows.value() > 0) {
       auto note = in.database.prepare(
-          "INSERT INTO pruned VALUES(?1,?2,?3) ON CONFLICT(what) DO UPDATE SET until_ns=max(until_ns,?2), rows=rows+?3");
+          "INSERT INTO pruned VALUES(?1,?2,?3) ON CONFLICT(what) DO UPDATE SET until_ns=max(until_ns,?2), "
+          "rows=rows+?3");
       if (!note) return note.error();
       note.value().bind(1, std::string_view(detail.what)).bind(2, before.value).bind(3, rows.value());
       if (auto done = note.value().run(); !done) return done;
@@ -503,9 +596,11 @@ Result<Pruned> LogbookWriter::prune(UtcNs now, const config::LogbookSettings& se
       if (!rows) return rows.error();
       if (rows.value() == 0) break;
       const std::int64_t part = std::max<std::int64_t>(1, std::min<std::int64_t>(rows.value() / 10, 20000));
-      const auto until = in.database.integer_of("SELECT begin_ns" + where + " ORDER BY begin_ns LIMIT 1 OFFSET " + std::to_string(part - 1));
+      const auto until = in.database.integer_of(
+          "SELECT begin_ns" + where + " ORDER BY begin_ns LIMIT 1 OFFSET " + std::to_string(part - 1));
       if (!until) return until.error();
-      if (auto done = drop(detail, UtcNs{until.value() + 1}, "the logbook's size budget"); !done) return done.error();
+      if (auto done = drop(detail, UtcNs{until.value() + 1}, "the logbook's size budget"); !done)
+        return done.error();
       used = in.used_bytes();
       if (!used) return used.error();
     }

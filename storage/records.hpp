@@ -62,11 +62,11 @@ struct Event {
   UtcNs begin;
   UtcNs begin_window_end;
   EventEnd end_reason = EventEnd::open;
-  UtcNs end;             ///< while open: the last time known
+  UtcNs end;  ///< while open: the last time known
   UtcNs end_window_end;
   std::int64_t duration_ns = 0;
 
-  std::uint8_t phases = 0;   ///< bit p: phase p took part
+  std::uint8_t phases = 0;  ///< bit p: phase p took part
   Phase worst_phase = Phase::l1;
   double extreme_v = kNotMeasured;  ///< residual voltage (lowest half-cycle value) or highest
   bool extreme_is_bound = false;    ///< a sensor stood at its limit: the true extreme lies further out
@@ -75,11 +75,12 @@ struct Event {
   double hysteresis_v = 0.0;
 
   Origin origin = Origin::not_judged;
-  std::string reason;                ///< the origin in one sentence with figures
-  std::optional<bool> held_off;      ///< input events with an output beside: the output stayed in its band
-  double input_low_v = kNotMeasured;   ///< out_of_band and output events: lowest input half-cycle value meanwhile
+  std::string reason;            ///< the origin in one sentence with figures
+  std::optional<bool> held_off;  ///< input events with an output beside: the output stayed in its band
+  double input_low_v =
+      kNotMeasured;  ///< out_of_band and output events: lowest input half-cycle value meanwhile
   double input_high_v = kNotMeasured;
-  double ratio_low = kNotMeasured;     ///< lowest and highest U_out/U_in meanwhile
+  double ratio_low = kNotMeasured;  ///< lowest and highest U_out/U_in meanwhile
   double ratio_high = kNotMeasured;
 
   ClockState clock;
@@ -104,11 +105,11 @@ struct Aggregate {
   double u_rms_v = kNotMeasured;
   double u_min_v = kNotMeasured;  ///< lowest half-cycle value that begins in the interval
   double u_max_v = kNotMeasured;
-  std::int32_t blocks = 0;        ///< 10/12-cycle values that went in
-  std::int64_t measured_ns = 0;   ///< time those cover; an interval is `partial` if this is not all of it
-  bool flagged = false;           ///< a sag, swell or interruption falls in it (4.7)
+  std::int32_t blocks = 0;       ///< 10/12-cycle values that went in
+  std::int64_t measured_ns = 0;  ///< time those cover; an interval is `partial` if this is not all of it
+  bool flagged = false;          ///< a sag, swell or interruption falls in it (4.7)
   bool partial = false;
-  bool over_range = false;        ///< a sensor stood at its limit: the value is a lower bound
+  bool over_range = false;  ///< a sensor stood at its limit: the value is a lower bound
   ClockState clock;
 };
 
@@ -130,14 +131,14 @@ struct RegulatorInterval {
   Phase phase = Phase::l1;
   UtcNs begin;  ///< the 10-minute tick
   UtcNs end;
-  std::int64_t input_half_cycles = 0;   ///< half-cycle values measured on that side
+  std::int64_t input_half_cycles = 0;  ///< half-cycle values measured on that side
   std::int64_t output_half_cycles = 0;
   std::int64_t input_in_band = 0;
   std::int64_t output_in_band = 0;
-  std::int64_t output_low = 0;          ///< below the band
+  std::int64_t output_low = 0;  ///< below the band
   std::int64_t output_high = 0;
-  std::int64_t pairs = 0;               ///< with both sides known and the input high enough for a ratio
-  std::int64_t correctable = 0;         ///< pairs whose input the declared ratio range can bring into the band
+  std::int64_t pairs = 0;        ///< with both sides known and the input high enough for a ratio
+  std::int64_t correctable = 0;  ///< pairs whose input the declared ratio range can bring into the band
   double ratio_min = kNotMeasured;
   double ratio_mean = kNotMeasured;
   double ratio_max = kNotMeasured;
@@ -166,8 +167,8 @@ struct SessionBegin {
   std::string program;  ///< "tramlined 0.1.0"
   std::string source;   ///< what the source says of itself
   double rate_hz = 0.0;
-  bool dated = true;    ///< false: times count from the recording's begin
-  UtcNs begin;          ///< of sample 0
+  bool dated = true;  ///< false: times count from the recording's begin
+  UtcNs begin;        ///< of sample 0
 };
 struct SessionEnd {
   std::string why;
@@ -219,11 +220,13 @@ struct SettingsInForce {
 /// Something that was lost on the way to the logbook, so that nobody takes silence for peace.
 struct Loss {
   UtcNs at;
-  std::string what;  ///< "aggregates dropped: the queue was full", "waveform left out: the day's allowance is used"
+  std::string
+      what;  ///< "aggregates dropped: the queue was full", "waveform left out: the day's allowance is used"
   std::int64_t count = 0;
 };
 
-using Record = std::variant<SessionBegin, SessionEnd, Event, Aggregate, Frequency, RegulatorInterval, Correction, CoverageBegin, CoverageProgress,
-                            CoverageEnd, Waveform, ClockChange, SettingsInForce, Loss>;
+using Record =
+    std::variant<SessionBegin, SessionEnd, Event, Aggregate, Frequency, RegulatorInterval, Correction,
+                 CoverageBegin, CoverageProgress, CoverageEnd, Waveform, ClockChange, SettingsInForce, Loss>;
 
 }  // namespace tramline::storage

@@ -164,7 +164,9 @@ constexpr std::array<Migration, 1> kMigrations = {{{kVersion1}}};
 
 }  // namespace
 
-std::span<const Migration> migrations() { return kMigrations; }
+std::span<const Migration> migrations() {
+  return kMigrations;
+}
 
 Status migrate(Database& database, std::span<const Migration> steps) {
   auto version = database.integer_of("PRAGMA user_version");
@@ -173,7 +175,8 @@ Status migrate(Database& database, std::span<const Migration> steps) {
     auto transaction = Transaction::begin(database);
     if (!transaction) return transaction.error();
     if (auto done = database.execute(steps[v].sql); !done) return done.error();
-    if (auto done = database.execute("PRAGMA user_version=" + std::to_string(v + 1)); !done) return done.error();
+    if (auto done = database.execute("PRAGMA user_version=" + std::to_string(v + 1)); !done)
+      return done.error();
     if (auto done = transaction.value().commit(); !done) return done.error();
   }
   return kDone;
@@ -183,14 +186,15 @@ Status check_identity(const Database& database) {
   const auto application = database.integer_of("PRAGMA application_id");
   if (!application) return application.error();
   if (application.value() != kApplicationId) {
-    return Error{database.path(), "this is an SQLite file, but no Tramline logbook", "name a logbook; this file was not touched"};
+    return Error{database.path(), "this is an SQLite file, but no Tramline logbook",
+                 "name a logbook; this file was not touched"};
   }
   const auto version = database.integer_of("PRAGMA user_version");
   if (!version) return version.error();
   if (version.value() > newest_schema()) {
     return Error{database.path(),
-                 "written by a newer version (schema " + std::to_string(version.value()) + "; this program knows up to " +
-                     std::to_string(newest_schema()) + ")",
+                 "written by a newer version (schema " + std::to_string(version.value()) +
+                     "; this program knows up to " + std::to_string(newest_schema()) + ")",
                  "use that version, or a newer one"};
   }
   return kDone;

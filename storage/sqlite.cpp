@@ -10,16 +10,24 @@ namespace {
 
 const char* remedy_for(int code) {
   switch (code & 0xff) {
-    case SQLITE_FULL: return "the disk is full; make room";
+    case SQLITE_FULL:
+      return "the disk is full; make room";
     case SQLITE_READONLY:
-    case SQLITE_PERM: return "it may not be written; check who owns it and how it is mounted";
-    case SQLITE_CANTOPEN: return "check that the folder exists and may be written";
+    case SQLITE_PERM:
+      return "it may not be written; check who owns it and how it is mounted";
+    case SQLITE_CANTOPEN:
+      return "check that the folder exists and may be written";
     case SQLITE_BUSY:
-    case SQLITE_LOCKED: return "another program is writing to it; try again";
-    case SQLITE_IOERR: return "the storage device reports errors; check it";
-    case SQLITE_CORRUPT: return "the file is damaged; keep a copy of it";
-    case SQLITE_NOTADB: return "it is no logbook; name another file";
-    default: return "";
+    case SQLITE_LOCKED:
+      return "another program is writing to it; try again";
+    case SQLITE_IOERR:
+      return "the storage device reports errors; check it";
+    case SQLITE_CORRUPT:
+      return "the file is damaged; keep a copy of it";
+    case SQLITE_NOTADB:
+      return "it is no logbook; name another file";
+    default:
+      return "";
   }
 }
 
@@ -35,7 +43,9 @@ std::string path_of(sqlite3* database) {
 
 }  // namespace
 
-void Statement::Finalise::operator()(sqlite3_stmt* statement) const { sqlite3_finalize(statement); }
+void Statement::Finalise::operator()(sqlite3_stmt* statement) const {
+  sqlite3_finalize(statement);
+}
 
 Statement& Statement::bind(int at, std::int64_t value) {
   sqlite3_bind_int64(statement_.get(), at, value);
@@ -84,7 +94,9 @@ Status Statement::run() {
   }
 }
 
-std::int64_t Statement::integer(int column) const { return sqlite3_column_int64(statement_.get(), column); }
+std::int64_t Statement::integer(int column) const {
+  return sqlite3_column_int64(statement_.get(), column);
+}
 
 double Statement::number(int column) const {
   return is_null(column) ? std::nan("") : sqlite3_column_double(statement_.get(), column);
@@ -92,21 +104,29 @@ double Statement::number(int column) const {
 
 std::string Statement::text(int column) const {
   const auto* text = reinterpret_cast<const char*>(sqlite3_column_text(statement_.get(), column));
-  return text != nullptr ? std::string(text, static_cast<std::size_t>(sqlite3_column_bytes(statement_.get(), column))) : std::string();
+  return text != nullptr
+             ? std::string(text, static_cast<std::size_t>(sqlite3_column_bytes(statement_.get(), column)))
+             : std::string();
 }
 
 std::span<const std::uint8_t> Statement::blob(int column) const {
   const auto* bytes = static_cast<const std::uint8_t*>(sqlite3_column_blob(statement_.get(), column));
-  return {bytes, bytes != nullptr ? static_cast<std::size_t>(sqlite3_column_bytes(statement_.get(), column)) : 0};
+  return {bytes,
+          bytes != nullptr ? static_cast<std::size_t>(sqlite3_column_bytes(statement_.get(), column)) : 0};
 }
 
-bool Statement::is_null(int column) const { return sqlite3_column_type(statement_.get(), column) == SQLITE_NULL; }
+bool Statement::is_null(int column) const {
+  return sqlite3_column_type(statement_.get(), column) == SQLITE_NULL;
+}
 
-void Database::Close::operator()(sqlite3* database) const { sqlite3_close_v2(database); }
+void Database::Close::operator()(sqlite3* database) const {
+  sqlite3_close_v2(database);
+}
 
 Result<Database> Database::open(const std::string& path, Mode mode) {
   sqlite3* raw = nullptr;
-  const int flags = mode == Mode::read_only ? SQLITE_OPEN_READONLY : SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE;
+  const int flags =
+      mode == Mode::read_only ? SQLITE_OPEN_READONLY : SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE;
   const int code = sqlite3_open_v2(path.c_str(), &raw, flags | SQLITE_OPEN_NOMUTEX, nullptr);
   Database database(raw, path);
   if (code != SQLITE_OK) {
@@ -121,13 +141,15 @@ Result<Database> Database::open(const std::string& path, Mode mode) {
 }
 
 Status Database::execute(const std::string& sql) {
-  if (sqlite3_exec(database_.get(), sql.c_str(), nullptr, nullptr, nullptr) != SQLITE_OK) return error_of(database_.get(), path_);
+  if (sqlite3_exec(database_.get(), sql.c_str(), nullptr, nullptr, nullptr) != SQLITE_OK)
+    return error_of(database_.get(), path_);
   return kDone;
 }
 
 Result<Statement> Database::prepare(std::string_view sql) const {
   sqlite3_stmt* raw = nullptr;
-  if (sqlite3_prepare_v2(database_.get(), sql.data(), static_cast<int>(sql.size()), &raw, nullptr) != SQLITE_OK) {
+  if (sqlite3_prepare_v2(database_.get(), sql.data(), static_cast<int>(sql.size()), &raw, nullptr) !=
+      SQLITE_OK) {
     return error_of(database_.get(), path_);
   }
   return Statement(raw);
@@ -141,7 +163,9 @@ Result<std::int64_t> Database::integer_of(const std::string& sql) const {
   return row.value() ? statement.value().integer(0) : 0;
 }
 
-std::int64_t Database::last_row_id() const { return sqlite3_last_insert_rowid(database_.get()); }
+std::int64_t Database::last_row_id() const {
+  return sqlite3_last_insert_rowid(database_.get());
+}
 
 Result<Transaction> Transaction::begin(Database& database) {
   if (auto begun = database.execute("BEGIN IMMEDIATE"); !begun) return begun.error();

@@ -12,7 +12,8 @@
 struct sqlite3;
 struct sqlite3_stmt;
 
-/// A thin layer over SQLite's C interface: handles that close themselves, errors that are values, NaN as NULL.
+/// A thin layer over SQLite's C interface: handles that close themselves, errors that are values, NaN as
+/// NULL.
 namespace tramline::storage {
 
 /// A prepared statement. Binds by position from 1, reads columns from 0. Belongs to its Database's thread.

@@ -43,15 +43,17 @@ void print_table(const LogbookView& view, const std::vector<storage::EventRow>& 
     std::cout << "No such event in this period.\n";
     return;
   }
-  std::cout << fmt::format("{:>6}  {:<34}{:<8}{:<14}{:<10}{:>14}  {:>12}  {}\n", "event", "begin", "side", "kind", "phases", "lasting",
-                           "at worst", "");
+  std::cout << fmt::format("{:>6}  {:<34}{:<8}{:<14}{:<10}{:>14}  {:>12}  {}\n", "event", "begin", "side",
+                           "kind", "phases", "lasting", "at worst", "");
   for (const storage::EventRow& row : events) {
     const storage::Event& event = row.event;
-    std::cout << fmt::format("{:>6}  {:<34}{:<8}{:<14}{:<10}{:>14}  {:>12}  {}\n", row.id, view.when(row), name_of(event.side),
-                             name_of(event.kind), phases_text(event.phases), config::format_duration(event.duration_ns),
-                             volts_text(event.extreme_v) + (event.extreme_is_bound ? "+" : ""), remark_of(event));
+    std::cout << fmt::format(
+        "{:>6}  {:<34}{:<8}{:<14}{:<10}{:>14}  {:>12}  {}\n", row.id, view.when(row), name_of(event.side),
+        name_of(event.kind), phases_text(event.phases), config::format_duration(event.duration_ns),
+        volts_text(event.extreme_v) + (event.extreme_is_bound ? "+" : ""), remark_of(event));
   }
-  std::cout << "A duration runs from the first half-cycle value past the threshold to the first one back. See one: tramline wave "
+  std::cout << "A duration runs from the first half-cycle value past the threshold to the first one back. "
+               "See one: tramline wave "
                "LOGBOOK EVENT\n";
 }
 
@@ -66,7 +68,8 @@ ExitStatus events(const Question& question, const Filter& filter) {
   if (!view) return tell(view.error(), ExitStatus::wrong_usage);
   auto found = view.value().events();
   if (!found) return tell(found.error(), ExitStatus::could_not);
-  std::erase_if(found.value(), [&](const storage::EventRow& row) { return !passes(row.event, filter, longer_than_ns); });
+  std::erase_if(found.value(),
+                [&](const storage::EventRow& row) { return !passes(row.event, filter, longer_than_ns); });
   if (!question.json) {
     print_table(view.value(), found.value());
     return ExitStatus::answered;
@@ -83,13 +86,16 @@ ExitStatus events(const Question& question, const Filter& filter) {
 }  // namespace
 
 void add_events(CLI::App& app, ExitStatus& status) {
-  CLI::App* command = app.add_subcommand("events", "List sags, swells, interruptions and excursions from the band.");
+  CLI::App* command =
+      app.add_subcommand("events", "List sags, swells, interruptions and excursions from the band.");
   auto question = std::make_shared<Question>();
   auto filter = std::make_shared<Filter>();
   question->add_to(*command);
   command->add_option("--side", filter->side, "only this side")->check(CLI::IsMember({"input", "output"}));
-  command->add_option("--kind", filter->kind, "only this kind")->check(CLI::IsMember({"sag", "swell", "interruption", "out-of-band"}));
-  command->add_option("--origin", filter->origin, "only of this origin")->check(CLI::IsMember({"supply", "regulator", "undecided"}));
+  command->add_option("--kind", filter->kind, "only this kind")
+      ->check(CLI::IsMember({"sag", "swell", "interruption", "out-of-band"}));
+  command->add_option("--origin", filter->origin, "only of this origin")
+      ->check(CLI::IsMember({"supply", "regulator", "undecided"}));
   command->add_option("--longer-than", filter->longer_than, "only what lasted longer: 1.5s, 200ms, 2m");
   command->callback([question, filter, &status] { status = events(*question, *filter); });
 }

@@ -49,17 +49,20 @@ std::string yaml_string(const std::string& text) {
 /// The site file that stands for the options of an import without one.
 Result<std::string> site_text(const Request& request) {
   if (!(request.nominal_v > 0.0)) {
-    return wrong_option("import", "without --site the nominal voltage is not known",
-                        "give --nominal-v, in the recording's own volts (a secondary voltage or 1 for per unit), or --site");
+    return wrong_option(
+        "import", "without --site the nominal voltage is not known",
+        "give --nominal-v, in the recording's own volts (a secondary voltage or 1 for per unit), or --site");
   }
   std::string channels;
   bool three_phase = false;
-  const std::vector<std::string> given = request.channels.empty() ? std::vector<std::string>{"input.L1"} : request.channels;
+  const std::vector<std::string> given =
+      request.channels.empty() ? std::vector<std::string>{"input.L1"} : request.channels;
   for (const std::string& text : given) {
     const std::size_t dot = text.find('.');
     const std::size_t equals = std::min(text.find('='), text.size());
     if (dot == std::string::npos || dot > equals) {
-      return wrong_option("--channel " + text, "this names no channel", "write input.L1=COLUMN or output.L2=NAME*SCALE");
+      return wrong_option("--channel " + text, "this names no channel",
+                          "write input.L1=COLUMN or output.L2=NAME*SCALE");
     }
     const std::string phase = text.substr(dot + 1, equals - dot - 1);
     std::string column = equals < text.size() ? text.substr(equals + 1) : "";
@@ -69,17 +72,19 @@ Result<std::string> site_text(const Request& request) {
       column.resize(star);
     }
     three_phase = three_phase || phase != "L1";
-    channels += fmt::format("  - {{side: {}, phase: {}", yaml_string(text.substr(0, dot)), yaml_string(phase));
+    channels +=
+        fmt::format("  - {{side: {}, phase: {}", yaml_string(text.substr(0, dot)), yaml_string(phase));
     if (!column.empty()) channels += ", source_channel: " + yaml_string(column);
     if (!scale.empty()) channels += ", scale: " + scale;
     channels += "}\n";
   }
   const std::string name = request.recording.substr(request.recording.rfind('/') + 1);
   return fmt::format(
-      "# Made from the options of an import.\nsite:\n  name: {}\n  zone: UTC\n  nominal_v: {}\n  frequency_hz: {}\n  phases: {}\n"
+      "# Made from the options of an import.\nsite:\n  name: {}\n  zone: UTC\n  nominal_v: {}\n  "
+      "frequency_hz: {}\n  phases: {}\n"
       "channels:\n{}logbook:\n  path: {}\nsource:\n  kind: recording\n  path: {}\n",
-      yaml_string("recording " + name), request.nominal_v, request.frequency_hz, three_phase ? 3 : 1, channels, yaml_string(request.into),
-      yaml_string(request.recording));
+      yaml_string("recording " + name), request.nominal_v, request.frequency_hz, three_phase ? 3 : 1,
+      channels, yaml_string(request.into), yaml_string(request.recording));
 }
 
 /// The site to measure by, with the options put into it. Prints the faults of a site file itself.
@@ -104,7 +109,8 @@ Result<config::Site> site_of(const Request& request) {
   if (auto* simulator = std::get_if<config::SimulatorSettings>(&site.source)) {
     simulator->real_time = false;
     if (!(simulator->run_for_s > 0.0)) {
-      return Error{request.site_file, "the simulator is to run until stopped, so an import of it would never end",
+      return Error{request.site_file,
+                   "the simulator is to run until stopped, so an import of it would never end",
                    "give source.run_for, or a recording to import"};
     }
   }
@@ -127,7 +133,9 @@ Result<config::Site> site_of(const Request& request) {
 }
 
 UtcNs now() {
-  return {std::chrono::duration_cast<std::chrono::nanoseconds>(std::chrono::system_clock::now().time_since_epoch()).count()};
+  return {std::chrono::duration_cast<std::chrono::nanoseconds>(
+              std::chrono::system_clock::now().time_since_epoch())
+              .count()};
 }
 
 struct Imported {
@@ -138,7 +146,8 @@ struct Imported {
 Result<Imported> run(const config::Site& site, acquire::Source& source, storage::LogbookWriter& logbook) {
   const acquire::StreamInfo& info = source.info();
   std::vector<storage::Record> records;
-  records.emplace_back(storage::SessionBegin{std::string("tramline ") + kVersion, info.what, info.rate_hz, info.dated, info.begin});
+  records.emplace_back(storage::SessionBegin{std::string("tramline ") + kVersion, info.what, info.rate_hz,
+                                             info.dated, info.begin});
   records.emplace_back(storage::SettingsInForce{info.begin, site.text});
   Pipeline pipeline(site, info, "import began");
   measure::Block block;
@@ -180,11 +189,15 @@ ExitStatus import(const Request& request) {
   if (!imported) return tell(imported.error(), ExitStatus::could_not);
   const acquire::StreamInfo& info = source.value()->info();
   std::cout << info.what << '\n';
-  for (const std::string& remark : info.remarks) std::cout << "Note: " << remark << '\n';
-  if (!info.dated) std::cout << "Note: the recording has no time of its own and none was given with --start: it is marked undated.\n";
+  for (const std::string& remark : info.remarks)
+    std::cout << "Note: " << remark << '\n';
+  if (!info.dated)
+    std::cout << "Note: the recording has no time of its own and none was given with --start: it is marked "
+                 "undated.\n";
   const double seconds = static_cast<double>(imported.value().frames) / info.rate_hz;
   std::cout << fmt::format("Measured {} samples a channel ({}); ended: {}.\n", imported.value().frames,
-                           config::format_duration(static_cast<std::int64_t>(seconds * 1e9)), imported.value().end);
+                           config::format_duration(static_cast<std::int64_t>(seconds * 1e9)),
+                           imported.value().end);
   std::cout << "Logbook: " << site.value().logbook.path << '\n';
   return ExitStatus::answered;
 }
@@ -194,13 +207,19 @@ ExitStatus import(const Request& request) {
 void add_import(CLI::App& app, ExitStatus& status) {
   CLI::App* command = app.add_subcommand("import", "Measure a recording, or a simulation, into a logbook.");
   auto request = std::make_shared<Request>();
-  command->add_option("RECORDING", request->recording, "WAV, CSV or COMTRADE (.cfg, .cff); absent: the site's own source");
-  command->add_option("--site", request->site_file, "the site file: nominal voltage, channels, regulator, thresholds");
+  command->add_option("RECORDING", request->recording,
+                      "WAV, CSV or COMTRADE (.cfg, .cff); absent: the site's own source");
+  command->add_option("--site", request->site_file,
+                      "the site file: nominal voltage, channels, regulator, thresholds");
   command->add_option("--into", request->into, "the logbook to write; absent: the site's");
   command->add_option("--start", request->start, "time of the first sample, over the recording's own");
-  command->add_option("--channel", request->channels, "without --site: input.L1=COLUMN[*SCALE]; COLUMN is a number from 1 or a name; may be repeated");
-  command->add_option("--nominal-v", request->nominal_v, "without --site: nominal voltage in the recording's own volts");
-  command->add_option("--frequency-hz", request->frequency_hz, "without --site: 50 or 60")->capture_default_str();
+  command->add_option(
+      "--channel", request->channels,
+      "without --site: input.L1=COLUMN[*SCALE]; COLUMN is a number from 1 or a name; may be repeated");
+  command->add_option("--nominal-v", request->nominal_v,
+                      "without --site: nominal voltage in the recording's own volts");
+  command->add_option("--frequency-hz", request->frequency_hz, "without --site: 50 or 60")
+      ->capture_default_str();
   command->add_option("--rate-hz", request->rate_hz, "CSV without a time column: samples a second");
   command->add_option("--time-column", request->time_column, "CSV: the column that holds the time");
   command->add_flag("--primary", request->primary, "COMTRADE: take primary values, not secondary");

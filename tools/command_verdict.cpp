@@ -8,7 +8,8 @@
 namespace tramline::tools {
 
 void add_verdict(CLI::App& app, ExitStatus& status) {
-  CLI::App* command = app.add_subcommand("verdict", "Did the regulator hold its band, and if not, who is to blame?");
+  CLI::App* command =
+      app.add_subcommand("verdict", "Did the regulator hold its band, and if not, who is to blame?");
   auto question = std::make_shared<Question>();
   question->add_to(*command);
   command->callback([question, &status] {
@@ -18,7 +19,8 @@ void add_verdict(CLI::App& app, ExitStatus& status) {
       return;
     }
     const VerdictFigures figures = verdict_figures(evidence.value());
-    std::cout << (question->json ? verdict_json(evidence.value(), figures) : verdict_text(evidence.value(), figures));
+    std::cout << (question->json ? verdict_json(evidence.value(), figures)
+                                 : verdict_text(evidence.value(), figures));
     status = figures.answer == Answer::not_held ? ExitStatus::answered_bad : ExitStatus::answered;
   });
 }

@@ -2,8 +2,8 @@
 
 #include <CLI/CLI.hpp>
 
-/// The commands of `tramline`, one file each. Each adds itself to the command line and, when chosen, runs and says how
-/// it went.
+/// The commands of `tramline`, one file each. Each adds itself to the command line and, when chosen, runs and
+/// says how it went.
 namespace tramline::tools {
 
 /// What a command leaves behind for the shell.

@@ -22,8 +22,8 @@ struct Measured {
 /// What the verdict is drawn from: the records of the period asked about.
 struct Evidence {
   config::Site site;
-  std::string program;      ///< what wrote the logbook
-  std::string source;       ///< where the samples came from
+  std::string program;  ///< what wrote the logbook
+  std::string source;   ///< where the samples came from
   bool dated = true;
   std::optional<UtcNs> from;  ///< as asked; absent: from the first record
   std::optional<UtcNs> to;
@@ -34,8 +34,9 @@ struct Evidence {
   std::int64_t records_lost = 0;
 };
 
-/// Reads the evidence for a period, given as people write times ("" for no limit), from the logbook at `path`. The site is
-/// the one in force at the end of the period.
-[[nodiscard]] Result<Evidence> gather(const std::string& path, const std::string& from, const std::string& to);
+/// Reads the evidence for a period, given as people write times ("" for no limit), from the logbook at
+/// `path`. The site is the one in force at the end of the period.
+[[nodiscard]] Result<Evidence> gather(const std::string& path, const std::string& from,
+                                      const std::string& to);
 
 }  // namespace tramline::tools

@@ -12,7 +12,9 @@ namespace {
 
 using nlohmann::ordered_json;
 
-ordered_json figure(double value) { return std::isnan(value) ? ordered_json(nullptr) : ordered_json(value); }
+ordered_json figure(double value) {
+  return std::isnan(value) ? ordered_json(nullptr) : ordered_json(value);
+}
 
 ordered_json phases(std::uint8_t bits) {
   ordered_json list = ordered_json::array();
@@ -30,7 +32,8 @@ ordered_json json_of(const storage::Event& event) {
   json["kind"] = std::string(name_of(event.kind));
   json["phases"] = phases(event.phases);
   json["begin"] = config::format_utc(event.begin, 6);
-  json["end"] = event.end_reason == storage::EventEnd::open ? ordered_json(nullptr) : ordered_json(config::format_utc(event.end, 6));
+  json["end"] = event.end_reason == storage::EventEnd::open ? ordered_json(nullptr)
+                                                            : ordered_json(config::format_utc(event.end, 6));
   json["end_reason"] = std::string(name_of(event.end_reason));
   json["duration_s"] = seconds(event.duration_ns);
   json["begin_window_end"] = config::format_utc(event.begin_window_end, 6);
@@ -49,7 +52,9 @@ ordered_json json_of(const storage::Event& event) {
   json["ratio_low"] = figure(event.ratio_low);
   json["ratio_high"] = figure(event.ratio_high);
   json["clock_synchronised"] = event.clock.synchronised;
-  json["clock_error_bound_s"] = event.clock.error_bound_ns >= 0 ? ordered_json(seconds(event.clock.error_bound_ns)) : ordered_json(nullptr);
+  json["clock_error_bound_s"] = event.clock.error_bound_ns >= 0
+                                    ? ordered_json(seconds(event.clock.error_bound_ns))
+                                    : ordered_json(nullptr);
   return json;
 }
 

@@ -13,17 +13,21 @@ namespace {
 Result<std::optional<UtcNs>> limit(const std::string& text, const std::string& zone, const char* option) {
   if (text.empty()) return std::optional<UtcNs>();
   const auto time = config::parse_time(text, zone);
-  if (!time) return Error{std::string(option) + " " + time.error().where, time.error().what, time.error().remedy};
+  if (!time)
+    return Error{std::string(option) + " " + time.error().where, time.error().what, time.error().remedy};
   return std::optional<UtcNs>(time.value());
 }
 
 /// The site described by the settings in force at `at`.
-Result<config::Site> site_at(const storage::LogbookReader& reader, const std::string& path, std::optional<UtcNs> at) {
+Result<config::Site> site_at(const storage::LogbookReader& reader, const std::string& path,
+                             std::optional<UtcNs> at) {
   const auto text = reader.settings(at);
   if (!text) return text.error();
   if (!text.value()) return Error{path, "the logbook holds no site file yet", "nothing was recorded in it"};
   config::SiteFile file = config::parse_site(*text.value(), "site file in the logbook");
-  if (!file.ok()) return Error{path, "the site file kept in the logbook is not understood: " + file.fault_text(), "use a newer version"};
+  if (!file.ok())
+    return Error{path, "the site file kept in the logbook is not understood: " + file.fault_text(),
+                 "use a newer version"};
   return std::move(*file.site);
 }
 
@@ -34,7 +38,8 @@ Result<LogbookView> open_view(const std::string& path, const std::string& from, 
   if (!reader) return reader.error();
   auto sessions = reader.value().sessions();
   if (!sessions) return sessions.error();
-  // The zone in which the period is meant comes from the newest site file, the site itself from the one in force at its end.
+  // The zone in which the period is meant comes from the newest site file, the site itself from the one in
+  // force at its end.
   auto newest = site_at(reader.value(), path, std::nullopt);
   if (!newest) return newest.error();
   const auto begin = limit(from, newest.value().zone, "--from");
@@ -46,11 +51,13 @@ Result<LogbookView> open_view(const std::string& path, const std::string& from, 
   }
   auto site = end.value() ? site_at(reader.value(), path, end.value()) : std::move(newest);
   if (!site) return site.error();
-  return LogbookView(std::move(reader).value(), std::move(sessions).value(), std::move(site).value(), {begin.value(), end.value()});
+  return LogbookView(std::move(reader).value(), std::move(sessions).value(), std::move(site).value(),
+                     {begin.value(), end.value()});
 }
 
 bool LogbookView::dated(std::int64_t session) const {
-  const auto found = std::find_if(sessions_.begin(), sessions_.end(), [&](const storage::Session& s) { return s.id == session; });
+  const auto found = std::find_if(sessions_.begin(), sessions_.end(),
+                                  [&](const storage::Session& s) { return s.id == session; });
   return found == sessions_.end() || found->begin.dated;
 }
 
@@ -59,12 +66,16 @@ std::string LogbookView::when(const storage::EventRow& row) const {
   return config::format_in_zone(row.event.begin, site_.zone);
 }
 
-Result<std::vector<storage::EventRow>> LogbookView::events() const { return reader_.events(period_); }
+Result<std::vector<storage::EventRow>> LogbookView::events() const {
+  return reader_.events(period_);
+}
 
 Result<storage::EventRow> LogbookView::event(std::int64_t id) const {
   auto row = reader_.event(id);
   if (!row) return row.error();
-  if (!row.value()) return Error{"event " + std::to_string(id), "there is no event with this number", "see `tramline events`"};
+  if (!row.value())
+    return Error{"event " + std::to_string(id), "there is no event with this number",
+                 "see `tramline events`"};
   return std::move(*row.value());
 }
 
@@ -74,8 +85,10 @@ Result<storage::Waveform> LogbookView::waveform_of(const storage::EventRow& row,
   const auto found = reader_.waveforms(row.session, {at, at});
   if (!found) return found.error();
   if (found.value().empty()) {
-    return Error{"event " + std::to_string(row.id), std::string("no waveform was kept around its ") + (around_end ? "end" : "begin"),
-                 "excursions from the band alone have none; a day's allowance or pruning may have left it out"};
+    return Error{
+        "event " + std::to_string(row.id),
+        std::string("no waveform was kept around its ") + (around_end ? "end" : "begin"),
+        "excursions from the band alone have none; a day's allowance or pruning may have left it out"};
   }
   return reader_.waveform(around_end ? found.value().back().id : found.value().front().id);
 }
@@ -98,7 +111,8 @@ Result<Evidence> gather(const std::string& path, const std::string& from, const 
   auto coverage = reader.coverage(period);
   if (!coverage) return coverage.error();
   for (const auto& stretch : coverage.value()) {
-    evidence.coverage.push_back({stretch.begin, stretch.until, stretch.measured_ns, stretch.why_ended.value_or("")});
+    evidence.coverage.push_back(
+        {stretch.begin, stretch.until, stretch.measured_ns, stretch.why_ended.value_or("")});
   }
   auto intervals = reader.regulator_intervals(period);
   if (!intervals) return intervals.error();
@@ -108,7 +122,8 @@ Result<Evidence> gather(const std::string& path, const std::string& from, const 
   evidence.ten_minutes = std::move(ten_minutes).value();
   auto events = reader.events(period);
   if (!events) return events.error();
-  for (auto& row : events.value()) evidence.events.push_back(std::move(row.event));
+  for (auto& row : events.value())
+    evidence.events.push_back(std::move(row.event));
   auto losses = reader.losses();
   if (!losses) return losses.error();
   for (const storage::Loss& loss : losses.value()) {

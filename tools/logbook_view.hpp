@@ -33,7 +33,8 @@ class LogbookView {
 
  private:
   friend Result<LogbookView> open_view(const std::string&, const std::string&, const std::string&);
-  LogbookView(storage::LogbookReader reader, std::vector<storage::Session> sessions, config::Site site, storage::Period period)
+  LogbookView(storage::LogbookReader reader, std::vector<storage::Session> sessions, config::Site site,
+              storage::Period period)
       : reader_(std::move(reader)), sessions_(std::move(sessions)), site_(std::move(site)), period_(period) {}
 
   storage::LogbookReader reader_;
@@ -42,7 +43,9 @@ class LogbookView {
   storage::Period period_;
 };
 
-/// Opens the logbook at `path` for the period given as people write times ("" for no limit), in the site's zone.
-[[nodiscard]] Result<LogbookView> open_view(const std::string& path, const std::string& from, const std::string& to);
+/// Opens the logbook at `path` for the period given as people write times ("" for no limit), in the site's
+/// zone.
+[[nodiscard]] Result<LogbookView> open_view(const std::string& path, const std::string& from,
+                                            const std::string& to);
 
 }  // namespace tramline::tools

@@ -10,8 +10,10 @@ int main(int argc, char** argv) {
   CLI::App app("Answers questions from the record of a mains supply and its servo regulator.", "tramline");
   app.set_version_flag("--version", std::string("tramline ") + tramline::kVersion);
   app.require_subcommand(1);
-  app.footer("Times of day may be given with an offset, 2026-03-01T06:00+05:30, or without one in the site's zone.\n"
-             "Exit status: 0 answered; 1 answered, and the answer is bad; 2 wrong usage or input; 3 could not do it.");
+  app.footer(
+      "Times of day may be given with an offset, 2026-03-01T06:00+05:30, or without one in the site's zone.\n"
+      "Exit status: 0 answered; 1 answered, and the answer is bad; 2 wrong usage or input; 3 could not do "
+      "it.");
 
   ExitStatus status = ExitStatus::answered;
   add_verdict(app, status);

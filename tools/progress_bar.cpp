@@ -21,7 +21,8 @@ void ProgressBar::show(double done) {
   constexpr int kWidth = 30;
   const int full = static_cast<int>(done * kWidth);
   std::string line = "\r" + what_ + "  " + std::string(static_cast<std::size_t>(full), '=') +
-                     std::string(static_cast<std::size_t>(kWidth - full), '.') + fmt::format(" {:3.0f} %", 100.0 * done);
+                     std::string(static_cast<std::size_t>(kWidth - full), '.') +
+                     fmt::format(" {:3.0f} %", 100.0 * done);
   const double gone_s = std::chrono::duration<double>(now - begin_).count();
   if (done > 0.02 && gone_s > 1.0) {
     const auto left_ns = static_cast<std::int64_t>(gone_s * (1.0 - done) / done) * 1'000'000'000;

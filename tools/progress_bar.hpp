@@ -5,7 +5,8 @@
 
 namespace tramline::tools {
 
-/// How far a long piece of work has come, on one line of the terminal's error stream; silent where that is no terminal.
+/// How far a long piece of work has come, on one line of the terminal's error stream; silent where that is no
+/// terminal.
 class ProgressBar {
  public:
   explicit ProgressBar(std::string what);

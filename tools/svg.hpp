@@ -23,8 +23,10 @@ class Svg {
 
   void line(double x1, double y1, double x2, double y2, const Stroke& stroke);
   void polyline(const std::vector<std::pair<double, double>>& points, const Stroke& stroke);
-  void rectangle(double x, double y, double width, double height, std::string_view fill, const Stroke* stroke = nullptr);
-  void text(double x, double y, std::string_view words, Anchor anchor = Anchor::start, double size = 12.0, bool bold = false);
+  void rectangle(double x, double y, double width, double height, std::string_view fill,
+                 const Stroke* stroke = nullptr);
+  void text(double x, double y, std::string_view words, Anchor anchor = Anchor::start, double size = 12.0,
+            bool bold = false);
 
   [[nodiscard]] std::string finish() &&;
 
@@ -36,7 +38,8 @@ class Svg {
 /// `text` made safe inside XML and HTML, in content and in quoted attributes. Control characters are dropped.
 [[nodiscard]] std::string escaped(std::string_view text);
 
-/// Round figures for an axis from `low` to `high`, about `wanted` of them: multiples of 1, 2 or 5 times a power of ten.
+/// Round figures for an axis from `low` to `high`, about `wanted` of them: multiples of 1, 2 or 5 times a
+/// power of ten.
 [[nodiscard]] std::vector<double> axis_ticks(double low, double high, int wanted);
 
 }  // namespace tramline::tools

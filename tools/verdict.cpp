@@ -69,7 +69,9 @@ Answer answer_of(const Evidence& evidence, const VerdictFigures& figures) {
 
 // ---- words -------------------------------------------------------------------------------------------
 
-std::string times_text(std::int64_t n) { return n == 1 ? "once" : n == 2 ? "twice" : fmt::format("{} times", n); }
+std::string times_text(std::int64_t n) {
+  return n == 1 ? "once" : n == 2 ? "twice" : fmt::format("{} times", n);
+}
 
 std::string when(UtcNs t, const Evidence& evidence, int decimals = 0) {
   if (!evidence.dated) return format_duration(t.value) + " from the begin";
@@ -88,14 +90,19 @@ std::string blame(const VerdictFigures& figures) {
   const OfOrigin undecided = of(storage::Origin::undecided);
   std::vector<std::string> parts;
   const auto part = [&](const char* who, const OfOrigin& o) {
-    if (o.times > 0) parts.push_back(fmt::format("{} {} ({})", who, o.times == figures.excursions ? "all" : std::to_string(o.times), format_duration(o.total_ns)));
+    if (o.times > 0)
+      parts.push_back(fmt::format("{} {} ({})", who,
+                                  o.times == figures.excursions ? "all" : std::to_string(o.times),
+                                  format_duration(o.total_ns)));
   };
   part("the regulator for", regulator);
   part("the supply for", supply);
   std::string text;
-  for (std::size_t i = 0; i < parts.size(); ++i) text += (i == 0 ? "To blame is " : i + 1 == parts.size() ? " and " : ", ") + parts[i];
+  for (std::size_t i = 0; i < parts.size(); ++i)
+    text += (i == 0 ? "To blame is " : i + 1 == parts.size() ? " and " : ", ") + parts[i];
   if (undecided.times > 0) {
-    text += fmt::format("{}{} undecided ({})", text.empty() ? "" : "; ", undecided.times == 1 ? "1 is" : fmt::format("{} are", undecided.times),
+    text += fmt::format("{}{} undecided ({})", text.empty() ? "" : "; ",
+                        undecided.times == 1 ? "1 is" : fmt::format("{} are", undecided.times),
                         format_duration(undecided.total_ns));
   }
   if (!text.empty()) text += '.';
@@ -107,32 +114,43 @@ std::string sentence(const Evidence& evidence, const VerdictFigures& figures) {
     case Answer::nothing_measured:
       return "Nothing was measured in this period, so nothing can be said about it.";
     case Answer::no_output:
-      return "This site has no sensor on the output, so whether a regulator held its band cannot be said. The supply was between " +
-             band_text(figures) + " for " + share_text(static_cast<double>(figures.input.in_band), static_cast<double>(figures.input.half_cycles)) +
+      return "This site has no sensor on the output, so whether a regulator held its band cannot be said. "
+             "The supply was between " +
+             band_text(figures) + " for " +
+             share_text(static_cast<double>(figures.input.in_band),
+                        static_cast<double>(figures.input.half_cycles)) +
              " of the time measured.";
     case Answer::no_regulator:
-      return "The site file describes no regulator, so there is no band to hold. The load got between " + band_text(figures) + " for " +
-             share_text(static_cast<double>(figures.output.in_band), static_cast<double>(figures.output.half_cycles)) + " of the time measured.";
+      return "The site file describes no regulator, so there is no band to hold. The load got between " +
+             band_text(figures) + " for " +
+             share_text(static_cast<double>(figures.output.in_band),
+                        static_cast<double>(figures.output.half_cycles)) +
+             " of the time measured.";
     case Answer::held:
-      return "The regulator held its band of " + band_text(figures) + ": the output never left it for longer than " +
+      return "The regulator held its band of " + band_text(figures) +
+             ": the output never left it for longer than " +
              format_duration(std::llround(evidence.site.regulator->grace_s * 1e9)) + ".";
-    case Answer::not_held: break;
+    case Answer::not_held:
+      break;
   }
-  return "The regulator did not hold its band of " + band_text(figures) + ": the output left it " + times_text(figures.excursions) + ", for " +
-         format_duration(figures.excursions_ns) + " in all. " + blame(figures);
+  return "The regulator did not hold its band of " + band_text(figures) + ": the output left it " +
+         times_text(figures.excursions) + ", for " + format_duration(figures.excursions_ns) + " in all. " +
+         blame(figures);
 }
 
 std::string extreme_text(const Extreme& extreme, const Evidence& evidence) {
   if (std::isnan(extreme.volts)) return "not measured";
   std::string text = volts_text(extreme.volts);
   // Month, day, hour and minute of the ten minutes it lies in.
-  if (evidence.dated) text += ", " + config::format_in_zone(extreme.begin, evidence.site.zone, 0).substr(5, 11);
+  if (evidence.dated)
+    text += ", " + config::format_in_zone(extreme.begin, evidence.site.zone, 0).substr(5, 11);
   return text;
 }
 
 void put_sides(const Evidence& evidence, const VerdictFigures& f, std::string& out) {
   const auto share = [](const OfSide& side, std::int64_t part) {
-    return side.measured ? share_text(static_cast<double>(part), static_cast<double>(side.half_cycles)) : std::string("not measured");
+    return side.measured ? share_text(static_cast<double>(part), static_cast<double>(side.half_cycles))
+                         : std::string("not measured");
   };
   const auto row = [&](std::string_view what, const std::string& input, const std::string& output) {
     fmt::format_to(std::back_inserter(out), "  {:<38}{:<26}{}\n", what, input, output);
@@ -142,10 +160,13 @@ void put_sides(const Evidence& evidence, const VerdictFigures& f, std::string& o
   if (f.output.measured) row("  below the band", "", share(f.output, f.output.low));
   if (f.output.measured) row("  above the band", "", share(f.output, f.output.high));
   row("lowest half cycle", extreme_text(f.input.lowest, evidence), extreme_text(f.output.lowest, evidence));
-  row("highest half cycle", extreme_text(f.input.highest, evidence), extreme_text(f.output.highest, evidence));
+  row("highest half cycle", extreme_text(f.input.highest, evidence),
+      extreme_text(f.output.highest, evidence));
   static constexpr const char* kKinds[] = {"sags", "swells", "interruptions"};
   for (std::size_t kind = 0; kind < 3; ++kind) {
-    const auto count = [kind](const OfSide& side) { return side.measured ? std::to_string(side.events[kind]) : std::string("not measured"); };
+    const auto count = [kind](const OfSide& side) {
+      return side.measured ? std::to_string(side.events[kind]) : std::string("not measured");
+    };
     row(kKinds[kind], count(f.input), count(f.output));
   }
   if (f.input.measured && f.output.measured && evidence.site.regulator) {
@@ -154,19 +175,30 @@ void put_sides(const Evidence& evidence, const VerdictFigures& f, std::string& o
   }
 }
 
-void put_excursion(std::string_view which, const storage::Event& event, const Evidence& evidence, std::string& out) {
-  fmt::format_to(std::back_inserter(out), "\n{}: {}, {} for {}{}; origin: {}.\n", which, when(event.begin, evidence),
-                 volts_text(event.extreme_v) + (event.extreme_is_bound ? " or beyond" : ""), format_duration(event.duration_ns),
-                 event.end_reason == storage::EventEnd::recovered ? std::string() : ", " + std::string(name_of(event.end_reason)), name_of(event.origin));
+void put_excursion(std::string_view which, const storage::Event& event, const Evidence& evidence,
+                   std::string& out) {
+  fmt::format_to(
+      std::back_inserter(out), "\n{}: {}, {} for {}{}; origin: {}.\n", which, when(event.begin, evidence),
+      volts_text(event.extreme_v) + (event.extreme_is_bound ? " or beyond" : ""),
+      format_duration(event.duration_ns),
+      event.end_reason == storage::EventEnd::recovered ? std::string()
+                                                       : ", " + std::string(name_of(event.end_reason)),
+      name_of(event.origin));
   if (!event.reason.empty()) out += indented(event.reason + ".", 2);
 }
 
 void put_coverage(const Evidence& evidence, const VerdictFigures& f, std::string& out) {
-  fmt::format_to(std::back_inserter(out), "\nMeasured: {} of {} ({})", format_duration(f.measured_ns), format_duration(f.span_ns),
-                 share_text(static_cast<double>(std::min(f.measured_ns, f.span_ns)), static_cast<double>(f.span_ns)));
-  if (f.gaps > 0) fmt::format_to(std::back_inserter(out), ", with {} {}, the longest {}", f.gaps, f.gaps == 1 ? "gap" : "gaps", format_duration(f.longest_gap_ns));
+  fmt::format_to(
+      std::back_inserter(out), "\nMeasured: {} of {} ({})", format_duration(f.measured_ns),
+      format_duration(f.span_ns),
+      share_text(static_cast<double>(std::min(f.measured_ns, f.span_ns)), static_cast<double>(f.span_ns)));
+  if (f.gaps > 0)
+    fmt::format_to(std::back_inserter(out), ", with {} {}, the longest {}", f.gaps,
+                   f.gaps == 1 ? "gap" : "gaps", format_duration(f.longest_gap_ns));
   out += ". What was not measured is in no figure above.\n";
-  if (evidence.records_lost > 0) fmt::format_to(std::back_inserter(out), "{} records were lost on the way to the logbook.\n", evidence.records_lost);
+  if (evidence.records_lost > 0)
+    fmt::format_to(std::back_inserter(out), "{} records were lost on the way to the logbook.\n",
+                   evidence.records_lost);
   if (!evidence.dated) out += "The recording is undated: times count from its begin.\n";
   out += "Samples from: " + evidence.source + "\n";
 }
@@ -197,32 +229,42 @@ VerdictFigures verdict_figures(const Evidence& evidence) {
     add(side.lowest, aggregate.u_min_v, aggregate, false);
     add(side.highest, aggregate.u_max_v, aggregate, true);
   }
-  for (const auto& event : evidence.events) add_event(event, evidence, figures);
+  for (const auto& event : evidence.events)
+    add_event(event, evidence, figures);
   figures.answer = answer_of(evidence, figures);
   return figures;
 }
 
 std::string verdict_text(const Evidence& evidence, const VerdictFigures& figures) {
   std::string out = evidence.site.name + ", ";
-  if (figures.answer == Answer::nothing_measured) return out + "no coverage.\n\n" + indented(sentence(evidence, figures), 0);
-  out += when(figures.from, evidence) + " to " + when(figures.to, evidence) + "\n\n" + indented(sentence(evidence, figures), 0) + "\n";
+  if (figures.answer == Answer::nothing_measured)
+    return out + "no coverage.\n\n" + indented(sentence(evidence, figures), 0);
+  out += when(figures.from, evidence) + " to " + when(figures.to, evidence) + "\n\n" +
+         indented(sentence(evidence, figures), 0) + "\n";
   put_sides(evidence, figures, out);
   if (figures.answer == Answer::not_held) {
-    fmt::format_to(std::back_inserter(out), "\n  {:<38}{:<10}in all\n", "excursions of the output, by origin", "times");
-    for (const storage::Origin origin : {storage::Origin::supply, storage::Origin::regulator, storage::Origin::undecided}) {
+    fmt::format_to(std::back_inserter(out), "\n  {:<38}{:<10}in all\n", "excursions of the output, by origin",
+                   "times");
+    for (const storage::Origin origin :
+         {storage::Origin::supply, storage::Origin::regulator, storage::Origin::undecided}) {
       const OfOrigin& of = figures.by_origin[static_cast<std::size_t>(origin)];
-      fmt::format_to(std::back_inserter(out), "  {:<38}{:<10}{}\n", name_of(origin), of.times, of.times > 0 ? format_duration(of.total_ns) : "");
+      fmt::format_to(std::back_inserter(out), "  {:<38}{:<10}{}\n", name_of(origin), of.times,
+                     of.times > 0 ? format_duration(of.total_ns) : "");
     }
     put_excursion("Longest", *figures.longest, evidence, out);
     const bool same = figures.worst->begin_sample == figures.longest->begin_sample;
     if (!same) put_excursion("Worst", *figures.worst, evidence, out);
   }
   if (figures.pairs > 0) {
-    out += "\n" + indented(fmt::format("The servo made {} corrections ({} of them turned back within 10 s), {:.2f} of ratio in all; the "
-                                     "supply was within what it can correct for {} of the half cycles with a ratio.",
-                                     figures.corrections, figures.reversals, figures.travel,
-                                     share_text(static_cast<double>(figures.correctable), static_cast<double>(figures.pairs))),
-                         0);
+    out += "\n" +
+           indented(
+               fmt::format(
+                   "The servo made {} corrections ({} of them turned back within 10 s), {:.2f} of ratio in "
+                   "all; the "
+                   "supply was within what it can correct for {} of the half cycles with a ratio.",
+                   figures.corrections, figures.reversals, figures.travel,
+                   share_text(static_cast<double>(figures.correctable), static_cast<double>(figures.pairs))),
+               0);
   }
   put_coverage(evidence, figures, out);
   return out;

@@ -10,14 +10,15 @@
 #include "storage/records.hpp"
 #include "tools/evidence.hpp"
 
-/// Did the regulator hold its band, and if not, who is to blame: from the records to figures, and from those to words.
+/// Did the regulator hold its band, and if not, who is to blame: from the records to figures, and from those
+/// to words.
 namespace tramline::tools {
 
 enum class Answer {
-  held,            ///< no excursion that counts
-  not_held,        ///< at least one
-  no_output,       ///< there is no output sensor
-  no_regulator,    ///< the site file describes none
+  held,          ///< no excursion that counts
+  not_held,      ///< at least one
+  no_output,     ///< there is no output sensor
+  no_regulator,  ///< the site file describes none
   nothing_measured,
 };
 
@@ -36,7 +37,7 @@ struct OfSide {
   bool measured = false;
   std::int64_t half_cycles = 0;
   std::int64_t in_band = 0;
-  std::int64_t low = 0;   ///< output only
+  std::int64_t low = 0;  ///< output only
   std::int64_t high = 0;
   Extreme lowest;
   Extreme highest;
@@ -67,7 +68,8 @@ struct VerdictFigures {
   double travel = 0.0;
 };
 
-/// Figures from evidence. Intervals, events and coverage are those that touch the period; stretches are cut to it.
+/// Figures from evidence. Intervals, events and coverage are those that touch the period; stretches are cut
+/// to it.
 [[nodiscard]] VerdictFigures verdict_figures(const Evidence& evidence);
 
 /// For people: the answer in a plain sentence first, then the figures.

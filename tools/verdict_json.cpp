@@ -13,18 +13,25 @@ using nlohmann::ordered_json;
 
 const char* word_for(Answer answer) {
   switch (answer) {
-    case Answer::held: return "held";
-    case Answer::not_held: return "not held";
-    case Answer::no_output: return "output not measured";
-    case Answer::no_regulator: return "no regulator described";
-    case Answer::nothing_measured: break;
+    case Answer::held:
+      return "held";
+    case Answer::not_held:
+      return "not held";
+    case Answer::no_output:
+      return "output not measured";
+    case Answer::no_regulator:
+      return "no regulator described";
+    case Answer::nothing_measured:
+      break;
   }
   return "nothing measured";
 }
 
 ordered_json json_of(const Extreme& extreme) {
   if (std::isnan(extreme.volts)) return nullptr;
-  return {{"v", extreme.volts}, {"within_from", config::format_utc(extreme.begin)}, {"within_to", config::format_utc(extreme.end)}};
+  return {{"v", extreme.volts},
+          {"within_from", config::format_utc(extreme.begin)},
+          {"within_to", config::format_utc(extreme.end)}};
 }
 
 ordered_json json_of(const OfSide& side) {
@@ -32,8 +39,10 @@ ordered_json json_of(const OfSide& side) {
   ordered_json json;
   json["half_cycles"] = side.half_cycles;
   json["in_band"] = side.in_band;
-  json["in_band_share"] = side.half_cycles > 0 ? ordered_json(static_cast<double>(side.in_band) / static_cast<double>(side.half_cycles))
-                                               : ordered_json(nullptr);
+  json["in_band_share"] =
+      side.half_cycles > 0
+          ? ordered_json(static_cast<double>(side.in_band) / static_cast<double>(side.half_cycles))
+          : ordered_json(nullptr);
   json["lowest"] = json_of(side.lowest);
   json["highest"] = json_of(side.highest);
   json["sags"] = side.events[0];
@@ -59,17 +68,20 @@ std::string verdict_json(const Evidence& evidence, const VerdictFigures& figures
                       {"records_lost", evidence.records_lost}};
   json["input"] = json_of(figures.input);
   json["output"] = json_of(figures.output);
-  if (figures.input.measured && figures.output.measured && evidence.site.regulator) json["input"]["held_off"] = figures.input.held_off;
+  if (figures.input.measured && figures.output.measured && evidence.site.regulator)
+    json["input"]["held_off"] = figures.input.held_off;
   if (figures.output.measured) {
     json["output"]["below_band"] = figures.output.low;
     json["output"]["above_band"] = figures.output.high;
   }
   ordered_json origins;
-  for (const storage::Origin origin : {storage::Origin::supply, storage::Origin::regulator, storage::Origin::undecided}) {
+  for (const storage::Origin origin :
+       {storage::Origin::supply, storage::Origin::regulator, storage::Origin::undecided}) {
     const OfOrigin& of = figures.by_origin[static_cast<std::size_t>(origin)];
     origins[std::string(name_of(origin))] = {{"times", of.times}, {"total_s", seconds(of.total_ns)}};
   }
-  json["excursions"] = {{"times", figures.excursions}, {"total_s", seconds(figures.excursions_ns)}, {"by_origin", origins}};
+  json["excursions"] = {
+      {"times", figures.excursions}, {"total_s", seconds(figures.excursions_ns)}, {"by_origin", origins}};
   json["excursions"]["longest"] = figures.longest ? json_of(*figures.longest) : ordered_json(nullptr);
   json["excursions"]["worst"] = figures.worst ? json_of(*figures.worst) : ordered_json(nullptr);
   json["servo"] = {{"corrections", figures.corrections},

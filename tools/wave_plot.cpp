@@ -23,7 +23,9 @@ constexpr double kBottom = 52.0;
 constexpr double kLeft = 64.0;
 constexpr double kRight = 190.0;
 
-double seconds_between(UtcNs from, UtcNs to) { return static_cast<double>(to - from) / 1e9; }
+double seconds_between(UtcNs from, UtcNs to) {
+  return static_cast<double>(to - from) / 1e9;
+}
 
 /// Maps seconds and volts to the paper for one panel.
 struct Panel {
@@ -31,13 +33,16 @@ struct Panel {
   double to_s;
   double top;
   double peak_v;
-  [[nodiscard]] double x(double s) const { return kLeft + (s - from_s) / (to_s - from_s) * (kWidth - kLeft - kRight); }
+  [[nodiscard]] double x(double s) const {
+    return kLeft + (s - from_s) / (to_s - from_s) * (kWidth - kLeft - kRight);
+  }
   [[nodiscard]] double y(double v) const { return top + (1.0 - v / peak_v) / 2.0 * kPanelHeight; }
   [[nodiscard]] double right() const { return kWidth - kRight; }
 };
 
 /// The voltage as a line; where there are more samples than pixels, lowest and highest of each pixel.
-std::vector<std::pair<double, double>> outline(const std::vector<float>& volts, double rate_hz, const Panel& panel) {
+std::vector<std::pair<double, double>> outline(const std::vector<float>& volts, double rate_hz,
+                                               const Panel& panel) {
   const auto columns = static_cast<std::size_t>(panel.right() - kLeft);
   const std::size_t a_column = std::max<std::size_t>(1, volts.size() / columns);
   std::vector<std::pair<double, double>> points;
@@ -56,7 +61,8 @@ std::vector<std::pair<double, double>> outline(const std::vector<float>& volts, 
   return points;
 }
 
-void draw_line_at(Svg& svg, const Panel& panel, double volts, const Svg::Stroke& stroke, const std::string& label, double& last_y) {
+void draw_line_at(Svg& svg, const Panel& panel, double volts, const Svg::Stroke& stroke,
+                  const std::string& label, double& last_y) {
   const double y = panel.y(volts);
   svg.line(kLeft, y, panel.right(), y, stroke);
   // Labels keep a line's distance, from the highest voltage downwards.
@@ -76,15 +82,19 @@ void draw_limits(Svg& svg, const Panel& panel, const config::Site& site, Side si
   std::vector<Limit> limits = {
       {share(site.events.swell_pct), threshold, "swell " + volts_text(share(site.events.swell_pct))},
       {share(site.events.sag_pct), threshold, "sag " + volts_text(share(site.events.sag_pct))},
-      {share(site.events.interruption_pct), threshold, "interruption " + volts_text(share(site.events.interruption_pct))},
+      {share(site.events.interruption_pct), threshold,
+       "interruption " + volts_text(share(site.events.interruption_pct))},
   };
   if (side == Side::output && site.regulator) {
-    limits.push_back({site.regulator->band_high_v, edge, "band, upper edge " + volts_text(site.regulator->band_high_v)});
-    limits.push_back({site.regulator->band_low_v, edge, "band, lower edge " + volts_text(site.regulator->band_low_v)});
+    limits.push_back(
+        {site.regulator->band_high_v, edge, "band, upper edge " + volts_text(site.regulator->band_high_v)});
+    limits.push_back(
+        {site.regulator->band_low_v, edge, "band, lower edge " + volts_text(site.regulator->band_low_v)});
   }
   std::sort(limits.begin(), limits.end(), [](const Limit& a, const Limit& b) { return a.volts > b.volts; });
   double last_y = 0.0;
-  for (const Limit& limit : limits) draw_line_at(svg, panel, limit.volts, limit.stroke, limit.label, last_y);
+  for (const Limit& limit : limits)
+    draw_line_at(svg, panel, limit.volts, limit.stroke, limit.label, last_y);
 }
 
 void draw_axes(Svg& svg, const Panel& panel, bool with_times) {
@@ -103,7 +113,8 @@ void draw_axes(Svg& svg, const Panel& panel, bool with_times) {
   }
   if (with_times) {
     svg.text((kLeft + panel.right()) / 2.0, panel.top + kPanelHeight + 36.0,
-             in_ms ? "milliseconds from the begin of the event" : "seconds from the begin of the event", Svg::Anchor::middle);
+             in_ms ? "milliseconds from the begin of the event" : "seconds from the begin of the event",
+             Svg::Anchor::middle);
   }
 }
 
@@ -132,62 +143,76 @@ std::vector<WaveTrace> traces_of(const storage::Waveform& waveform, const config
   for (const auto& stored : waveform.traces) {
     WaveTrace trace;
     trace.channel = stored.channel;
-    for (const std::int16_t step : stored.steps) trace.volts.push_back(static_cast<float>(step) * stored.volts_per_step);
+    for (const std::int16_t step : stored.steps)
+      trace.volts.push_back(static_cast<float>(step) * stored.volts_per_step);
 
     measure::HalfCycleRms meter(waveform.rate_hz, site.nominal_hz, site.nominal_v, 0, 4096);
     std::vector<measure::HalfCycleValue> values;
     std::vector<measure::GridTick> ticks;
     meter.restart({0});
     for (std::size_t i = 0; i < trace.volts.size(); i += 4096) {
-      meter.feed(std::span(trace.volts).subspan(i, std::min<std::size_t>(4096, trace.volts.size() - i)), values, ticks);
+      meter.feed(std::span(trace.volts).subspan(i, std::min<std::size_t>(4096, trace.volts.size() - i)),
+                 values, ticks);
     }
     meter.finish(values, ticks);
     for (const auto& value : values) {
-      trace.half_cycles.push_back({value.begin / waveform.rate_hz, value.end / waveform.rate_hz, value.u_rms_v});
+      trace.half_cycles.push_back(
+          {value.begin / waveform.rate_hz, value.end / waveform.rate_hz, value.u_rms_v});
     }
     traces.push_back(std::move(trace));
   }
   return traces;
 }
 
-std::string wave_svg(const storage::Waveform& waveform, const storage::Event& event, const config::Site& site, bool undated) {
+std::string wave_svg(const storage::Waveform& waveform, const storage::Event& event, const config::Site& site,
+                     bool undated) {
   const std::vector<WaveTrace> traces = traces_of(waveform, site);
   const auto panels = static_cast<double>(traces.size());
   const double height = kTop + panels * kPanelHeight + (panels - 1.0) * kPanelGap + kBottom;
   const std::string what = std::string(name_of(event.kind)) + " on the " + std::string(name_of(event.side));
-  const std::string when = undated ? "undated, " + config::format_duration(event.begin.value) + " after the recording's begin"
-                                   : config::format_in_zone(event.begin, site.zone);
-  const std::string figures = volts_text(event.extreme_v) + (event.side == Side::input ? " at worst on the supply" : " at worst on the load") +
-                              ", for " + config::format_duration(event.duration_ns);
-  Svg svg(kWidth, height, site.name + ": " + what, when + "; " + figures + ". Grey: voltage. Black steps: half-cycle r.m.s.");
+  const std::string when =
+      undated ? "undated, " + config::format_duration(event.begin.value) + " after the recording's begin"
+              : config::format_in_zone(event.begin, site.zone);
+  const std::string figures =
+      volts_text(event.extreme_v) +
+      (event.side == Side::input ? " at worst on the supply" : " at worst on the load") + ", for " +
+      config::format_duration(event.duration_ns);
+  Svg svg(kWidth, height, site.name + ": " + what,
+          when + "; " + figures + ". Grey: voltage. Black steps: half-cycle r.m.s.");
   svg.text(kLeft, 24.0, site.name + ": " + what, Svg::Anchor::start, 16.0, true);
-  svg.text(kLeft, 42.0, when + " \xC2\xB7 " + figures + " \xC2\xB7 grey: voltage, black steps: half-cycle r.m.s.");
+  svg.text(kLeft, 42.0,
+           when + " \xC2\xB7 " + figures + " \xC2\xB7 grey: voltage, black steps: half-cycle r.m.s.");
 
   const double from_s = seconds_between(event.begin, waveform.begin);
   const double to_s = seconds_between(event.begin, waveform.end);
   for (std::size_t i = 0; i < traces.size(); ++i) {
     const WaveTrace& trace = traces[i];
     double peak = 1.05 * site.events.swell_pct / 100.0 * site.nominal_v;
-    for (const float v : trace.volts) peak = std::max(peak, std::abs(static_cast<double>(v)));
+    for (const float v : trace.volts)
+      peak = std::max(peak, std::abs(static_cast<double>(v)));
     const Panel panel{from_s, to_s, kTop + static_cast<double>(i) * (kPanelHeight + kPanelGap), 1.08 * peak};
-    svg.text(kLeft + 8.0, panel.top - 6.0, side_text(trace.channel.side) + ", " + std::string(name_of(trace.channel.phase)),
+    svg.text(kLeft + 8.0, panel.top - 6.0,
+             side_text(trace.channel.side) + ", " + std::string(name_of(trace.channel.phase)),
              Svg::Anchor::start, 12.0, true);
     draw_axes(svg, panel, i + 1 == traces.size());
     draw_trace(svg, panel, trace, waveform.rate_hz);
     draw_limits(svg, panel, site, trace.channel.side);
     draw_mark(svg, panel, 0.0, "begin");
-    if (event.end_reason != storage::EventEnd::open) draw_mark(svg, panel, seconds_between(event.begin, event.end), "end");
+    if (event.end_reason != storage::EventEnd::open)
+      draw_mark(svg, panel, seconds_between(event.begin, event.end), "end");
     const Svg::Stroke frame{"#222", 1.0};
     svg.rectangle(kLeft, panel.top, panel.right() - kLeft, kPanelHeight, "none", &frame);
   }
   return std::move(svg).finish();
 }
 
-std::string wave_csv(const storage::Waveform& waveform, const storage::Event& event, const config::Site& site) {
+std::string wave_csv(const storage::Waveform& waveform, const storage::Event& event,
+                     const config::Site& site) {
   const std::vector<WaveTrace> traces = traces_of(waveform, site);
   std::string csv = "time_from_event_begin_s";
   for (const WaveTrace& trace : traces) {
-    const std::string name = std::string(name_of(trace.channel.side)) + "_" + std::string(name_of(trace.channel.phase));
+    const std::string name =
+        std::string(name_of(trace.channel.side)) + "_" + std::string(name_of(trace.channel.phase));
     csv += "," + name + "_v," + name + "_half_cycle_rms_v";
   }
   csv += '\n';
@@ -199,7 +224,8 @@ std::string wave_csv(const storage::Waveform& waveform, const storage::Event& ev
     fmt::format_to(std::back_inserter(csv), "{:.7f}", from_s + t);
     for (std::size_t c = 0; c < traces.size(); ++c) {
       const auto& points = traces[c].half_cycles;
-      while (next[c] < points.size() && points[next[c]].at_s <= t) ++next[c];
+      while (next[c] < points.size() && points[next[c]].at_s <= t)
+        ++next[c];
       fmt::format_to(std::back_inserter(csv), ",{:.3f},", traces[c].volts[n]);
       if (next[c] > 0 && t < points[next[c] - 1].until_s) {
         fmt::format_to(std::back_inserter(csv), "{:.3f}", points[next[c] - 1].u_rms_v);

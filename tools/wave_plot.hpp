@@ -24,12 +24,15 @@ struct WaveTrace {
 /// Volts and half-cycle values of each channel of a captured waveform.
 [[nodiscard]] std::vector<WaveTrace> traces_of(const storage::Waveform& waveform, const config::Site& site);
 
-/// The waveform of an event as a picture: a panel a channel with the voltage, its half-cycle r.m.s. over it, the thresholds
-/// and, on the output, the band. Times from the event's begin. `undated`: do not speak of a date.
-[[nodiscard]] std::string wave_svg(const storage::Waveform& waveform, const storage::Event& event, const config::Site& site,
-                                   bool undated);
+/// The waveform of an event as a picture: a panel a channel with the voltage, its half-cycle r.m.s. over it,
+/// the thresholds and, on the output, the band. Times from the event's begin. `undated`: do not speak of a
+/// date.
+[[nodiscard]] std::string wave_svg(const storage::Waveform& waveform, const storage::Event& event,
+                                   const config::Site& site, bool undated);
 
-/// The same as CSV: time, then each channel's volts and the half-cycle r.m.s. last begun, with units in the header.
-[[nodiscard]] std::string wave_csv(const storage::Waveform& waveform, const storage::Event& event, const config::Site& site);
+/// The same as CSV: time, then each channel's volts and the half-cycle r.m.s. last begun, with units in the
+/// header.
+[[nodiscard]] std::string wave_csv(const storage::Waveform& waveform, const storage::Event& event,
+                                   const config::Site& site);
 
 }  // namespace tramline::tools

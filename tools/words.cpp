@@ -8,36 +8,51 @@ namespace tramline::tools {
 
 std::string_view name_of(storage::EventKind kind) {
   switch (kind) {
-    case storage::EventKind::sag: return "sag";
-    case storage::EventKind::swell: return "swell";
-    case storage::EventKind::interruption: return "interruption";
-    case storage::EventKind::out_of_band: break;
+    case storage::EventKind::sag:
+      return "sag";
+    case storage::EventKind::swell:
+      return "swell";
+    case storage::EventKind::interruption:
+      return "interruption";
+    case storage::EventKind::out_of_band:
+      break;
   }
   return "out of band";
 }
 
 std::string_view name_of(storage::Origin origin) {
   switch (origin) {
-    case storage::Origin::supply: return "supply";
-    case storage::Origin::regulator: return "regulator";
-    case storage::Origin::undecided: return "undecided";
-    case storage::Origin::not_judged: break;
+    case storage::Origin::supply:
+      return "supply";
+    case storage::Origin::regulator:
+      return "regulator";
+    case storage::Origin::undecided:
+      return "undecided";
+    case storage::Origin::not_judged:
+      break;
   }
   return "not judged";
 }
 
 std::string_view name_of(storage::EventEnd end) {
   switch (end) {
-    case storage::EventEnd::open: return "still going on";
-    case storage::EventEnd::recovered: return "recovered";
-    case storage::EventEnd::gap: return "cut short by a gap in the samples";
-    case storage::EventEnd::stopped: return "cut short when measuring was stopped";
-    case storage::EventEnd::cut_off: break;
+    case storage::EventEnd::open:
+      return "still going on";
+    case storage::EventEnd::recovered:
+      return "recovered";
+    case storage::EventEnd::gap:
+      return "cut short by a gap in the samples";
+    case storage::EventEnd::stopped:
+      return "cut short when measuring was stopped";
+    case storage::EventEnd::cut_off:
+      break;
   }
   return "cut short when the logger stopped without notice";
 }
 
-std::string side_text(Side side) { return side == Side::input ? "supply (input)" : "load (output)"; }
+std::string side_text(Side side) {
+  return side == Side::input ? "supply (input)" : "load (output)";
+}
 
 std::string volts_text(double volts) {
   if (std::isnan(volts)) return "not measured";

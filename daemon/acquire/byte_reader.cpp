@@ -15,7 +15,9 @@ namespace tramline::acquire {
 
 Result<ByteReader> ByteReader::open(const std::string& path) {
   const int descriptor = ::open(path.c_str(), O_RDONLY | O_CLOEXEC);
-  if (descriptor < 0) return Error{path, std::string("cannot be opened: ") + std::strerror(errno), "check the path and its permissions"};
+  if (descriptor < 0)
+    return Error{path, std::string("cannot be opened: ") + std::strerror(errno),
+                 "check the path and its permissions"};
   struct stat status {};
   if (::fstat(descriptor, &status) != 0 || S_ISDIR(status.st_mode)) {
     ::close(descriptor);
@@ -26,7 +28,10 @@ Result<ByteReader> ByteReader::open(const std::string& path) {
 }
 
 ByteReader::ByteReader(ByteReader&& other) noexcept
-    : descriptor_(std::exchange(other.descriptor_, -1)), path_(std::move(other.path_)), size_(other.size_), position_(other.position_) {}
+    : descriptor_(std::exchange(other.descriptor_, -1)),
+      path_(std::move(other.path_)),
+      size_(other.size_),
+      position_(other.position_) {}
 
 ByteReader::~ByteReader() {
   if (descriptor_ >= 0) ::close(descriptor_);
@@ -37,7 +42,9 @@ Result<std::size_t> ByteReader::read(std::span<std::uint8_t> into) {
   while (done < into.size()) {
     const ssize_t got = ::read(descriptor_, into.data() + done, into.size() - done);
     if (got < 0 && errno == EINTR) continue;
-    if (got < 0) return Error{path_ + ", byte " + std::to_string(position_), std::string("cannot be read: ") + std::strerror(errno), "check the device it is on"};
+    if (got < 0)
+      return Error{path_ + ", byte " + std::to_string(position_),
+                   std::string("cannot be read: ") + std::strerror(errno), "check the device it is on"};
     if (got == 0) break;
     done += static_cast<std::size_t>(got);
     position_ += got;
@@ -48,7 +55,8 @@ Result<std::size_t> ByteReader::read(std::span<std::uint8_t> into) {
 Status ByteReader::skip(std::int64_t bytes) {
   std::vector<std::uint8_t> into(static_cast<std::size_t>(std::clamp<std::int64_t>(bytes, 0, 65536)));
   while (bytes > 0) {
-    const auto part = static_cast<std::size_t>(std::min<std::int64_t>(bytes, static_cast<std::int64_t>(into.size())));
+    const auto part =
+        static_cast<std::size_t>(std::min<std::int64_t>(bytes, static_cast<std::int64_t>(into.size())));
     const auto got = read(std::span(into).first(part));
     if (!got) return got.error();
     if (got.value() == 0) break;
@@ -59,7 +67,8 @@ Status ByteReader::skip(std::int64_t bytes) {
 
 Result<bool> LineReader::fill() {
   if (begin_ > 0) {
-    std::copy(held_.begin() + static_cast<std::ptrdiff_t>(begin_), held_.begin() + static_cast<std::ptrdiff_t>(end_), held_.begin());
+    std::copy(held_.begin() + static_cast<std::ptrdiff_t>(begin_),
+              held_.begin() + static_cast<std::ptrdiff_t>(end_), held_.begin());
     end_ -= begin_;
     begin_ = 0;
   }
@@ -76,7 +85,8 @@ Result<bool> LineReader::next(std::string_view& line) {
     const auto* found = static_cast<const std::uint8_t*>(std::memchr(from, '\n', end_ - begin_));
     if (found == nullptr) {
       if (end_ - begin_ > kLongestLine) {
-        return Error{bytes_.path() + ":" + std::to_string(line_ + 1), "a line of more than 64 KiB", "is this a text file?"};
+        return Error{bytes_.path() + ":" + std::to_string(line_ + 1), "a line of more than 64 KiB",
+                     "is this a text file?"};
       }
       const auto more = fill();
       if (!more) return more.error();
@@ -92,7 +102,8 @@ Result<bool> LineReader::next(std::string_view& line) {
     ++line_;
     if (!line.empty() && static_cast<std::uint8_t>(line.front()) == kEndOfFile) over_ = true;
     if (over_ && !line.empty() && static_cast<std::uint8_t>(line.front()) == kEndOfFile) return false;
-    while (!line.empty() && (line.back() == '\r' || line.back() == ' ')) line.remove_suffix(1);
+    while (!line.empty() && (line.back() == '\r' || line.back() == ' '))
+      line.remove_suffix(1);
     if (!line.empty()) return true;
   }
   return false;
@@ -109,8 +120,10 @@ Result<std::size_t> LineReader::read(std::span<std::uint8_t> into) {
 
 std::string_view trimmed(std::string_view text) {
   const auto space = [](char c) { return c == ' ' || c == '\t' || c == '\r'; };
-  while (!text.empty() && space(text.front())) text.remove_prefix(1);
-  while (!text.empty() && space(text.back())) text.remove_suffix(1);
+  while (!text.empty() && space(text.front()))
+    text.remove_prefix(1);
+  while (!text.empty() && space(text.back()))
+    text.remove_suffix(1);
   return text;
 }
 
@@ -119,7 +132,8 @@ void split(std::string_view line, char separator, std::vector<std::string_view>&
   for (;;) {
     const std::size_t at = line.find(separator);
     std::string_view field = trimmed(line.substr(0, at));
-    if (field.size() >= 2 && field.front() == '"' && field.back() == '"') field = field.substr(1, field.size() - 2);
+    if (field.size() >= 2 && field.front() == '"' && field.back() == '"')
+      field = field.substr(1, field.size() - 2);
     fields.push_back(field);
     if (at == std::string_view::npos) return;
     line.remove_prefix(at + 1);
@@ -147,9 +161,14 @@ std::string displayable(std::string_view text) {
   std::string out;
   for (std::size_t i = 0; i < text.size();) {
     const auto lead = static_cast<unsigned char>(text[i]);
-    const std::size_t length = lead < 0x80 ? 1 : lead >= 0xc2 && lead < 0xe0 ? 2 : lead >= 0xe0 && lead < 0xf0 ? 3 : lead >= 0xf0 && lead < 0xf5 ? 4 : 0;
+    const std::size_t length = lead < 0x80                   ? 1
+                               : lead >= 0xc2 && lead < 0xe0 ? 2
+                               : lead >= 0xe0 && lead < 0xf0 ? 3
+                               : lead >= 0xf0 && lead < 0xf5 ? 4
+                                                             : 0;
     bool whole = length > 0 && i + length <= text.size() && lead >= 0x20;
-    for (std::size_t k = 1; whole && k < length; ++k) whole = (static_cast<unsigned char>(text[i + k]) & 0xc0U) == 0x80;
+    for (std::size_t k = 1; whole && k < length; ++k)
+      whole = (static_cast<unsigned char>(text[i + k]) & 0xc0U) == 0x80;
     if (whole) {
       out.append(text.substr(i, length));
       i += length;

@@ -27,24 +27,29 @@ class ByteReader {
   [[nodiscard]] const std::string& path() const { return path_; }
   [[nodiscard]] std::int64_t position() const { return position_; }
   [[nodiscard]] std::int64_t size() const { return size_; }
-  [[nodiscard]] double progress() const { return size_ > 0 ? static_cast<double>(position_) / static_cast<double>(size_) : 0.0; }
+  [[nodiscard]] double progress() const {
+    return size_ > 0 ? static_cast<double>(position_) / static_cast<double>(size_) : 0.0;
+  }
 
  private:
-  ByteReader(int descriptor, std::string path, std::int64_t size) : descriptor_(descriptor), path_(std::move(path)), size_(size) {}
+  ByteReader(int descriptor, std::string path, std::int64_t size)
+      : descriptor_(descriptor), path_(std::move(path)), size_(size) {}
   int descriptor_;
   std::string path_;
   std::int64_t size_;
   std::int64_t position_ = 0;
 };
 
-/// Lines of a text file, ended by LF, CR LF or CR CR LF; blank lines are passed over, an end-of-file character ends it.
+/// Lines of a text file, ended by LF, CR LF or CR CR LF; blank lines are passed over, an end-of-file
+/// character ends it.
 class LineReader {
  public:
   static constexpr std::size_t kLongestLine = 65536;
 
   explicit LineReader(ByteReader bytes) : bytes_(std::move(bytes)), held_(262144) {}
 
-  /// The next line that is not blank, valid until the next call; false at the end. A line longer than 64 KiB is an Error.
+  /// The next line that is not blank, valid until the next call; false at the end. A line longer than 64 KiB
+  /// is an Error.
   [[nodiscard]] Result<bool> next(std::string_view& line);
   /// Raw bytes that follow the lines read so far.
   [[nodiscard]] Result<std::size_t> read(std::span<std::uint8_t> into);

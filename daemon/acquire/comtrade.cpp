@@ -21,14 +21,15 @@ constexpr double kSameRate = 0.05;  // sections whose rates differ by less are o
 constexpr std::uint32_t kNoStamp = 0xffffffff;
 
 std::uint32_t u32(const std::uint8_t* b) {
-  return static_cast<std::uint32_t>(b[0]) | static_cast<std::uint32_t>(b[1]) << 8U | static_cast<std::uint32_t>(b[2]) << 16U |
-         static_cast<std::uint32_t>(b[3]) << 24U;
+  return static_cast<std::uint32_t>(b[0]) | static_cast<std::uint32_t>(b[1]) << 8U |
+         static_cast<std::uint32_t>(b[2]) << 16U | static_cast<std::uint32_t>(b[3]) << 24U;
 }
 
 /// Volts for one of a unit; nothing if it is no voltage.
 std::optional<double> volts_of(std::string_view unit) {
   std::string lower(trimmed(unit));
-  std::transform(lower.begin(), lower.end(), lower.begin(), [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
+  std::transform(lower.begin(), lower.end(), lower.begin(),
+                 [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
   if (lower == "v") return 1.0;
   if (lower == "kv") return 1e3;
   if (lower == "mv") return 1e-3;
@@ -77,16 +78,20 @@ Result<bool> DataReader::next_text(DataRow& row) {
       torn_ = true;
       return false;
     }
-    return Error{lines_.where(), std::to_string(fields_.size()) + " fields, where the configuration promises " + std::to_string(promised), "data and configuration do not belong together, or the file is damaged"};
+    return Error{lines_.where(),
+                 std::to_string(fields_.size()) + " fields, where the configuration promises " +
+                     std::to_string(promised),
+                 "data and configuration do not belong together, or the file is damaged"};
   }
-  if (!parse_integer(fields_[0], row.number)) return Error{lines_.where(), "the sample number cannot be read", "the file is damaged"};
+  if (!parse_integer(fields_[0], row.number))
+    return Error{lines_.where(), "the sample number cannot be read", "the file is damaged"};
   std::int64_t stamp = 0;
   row.stamp = parse_integer(fields_[1], stamp) ? std::optional(stamp) : std::nullopt;
   row.analog.resize(config_.analog.size());
   for (std::size_t i = 0; i < row.analog.size(); ++i) {
     double& value = row.analog[i];
-    // A missing value is an empty field (2013) or 99999 (1999, and later files too where no raw value may be so large);
-    // from memory.
+    // A missing value is an empty field (2013) or 99999 (1999, and later files too where no raw value may be
+    // so large); from memory.
     const bool may_be_99999 = config_.revision >= 2013 && config_.analog[i].raw_max >= 99999.0;
     if (!parse_number(fields_[2 + i], value) || (value == 99999.0 && !may_be_99999)) value = std::nan("");
   }
@@ -124,8 +129,12 @@ Result<bool> DataReader::next_binary(DataRow& row) {
 
 class ComtradeSource : public RowSource {
  public:
-  ComtradeSource(std::string path, ComtradeConfig config, LineReader data, const std::vector<config::ChannelSettings>& channels)
-      : RowSource(channels), path_(std::move(path)), config_(std::move(config)), data_(std::move(data), config_) {}
+  ComtradeSource(std::string path, ComtradeConfig config, LineReader data,
+                 const std::vector<config::ChannelSettings>& channels)
+      : RowSource(channels),
+        path_(std::move(path)),
+        config_(std::move(config)),
+        data_(std::move(data), config_) {}
 
   Status start(const config::RecordingSettings& settings);
 
@@ -133,10 +142,12 @@ class ComtradeSource : public RowSource {
     std::string remark = "end of file";
     const std::int64_t promised = config_.sections.empty() ? 0 : config_.sections.back().last;
     if (last_number_ < promised) {
-      remark = "the data ends early: " + std::to_string(last_number_) + " of " + std::to_string(promised) + " samples are there";
+      remark = "the data ends early: " + std::to_string(last_number_) + " of " + std::to_string(promised) +
+               " samples are there";
     }
     if (data_.torn()) remark += ", the last one is cut short";
-    if (missing_rows() - left_out_ > 0) remark += "; " + std::to_string(missing_rows() - left_out_) + " samples were marked missing";
+    if (missing_rows() - left_out_ > 0)
+      remark += "; " + std::to_string(missing_rows() - left_out_) + " samples were marked missing";
     return remark;
   }
   [[nodiscard]] double progress() const override { return data_.progress(); }
@@ -157,8 +168,8 @@ class ComtradeSource : public RowSource {
     std::int64_t last_number;
     std::int64_t first_index;
     double rate_hz;
-    std::int64_t begin_ns;      // since the first sample
-    bool used;                  // its rate is near enough to the stream's
+    std::int64_t begin_ns;  // since the first sample
+    bool used;              // its rate is near enough to the stream's
   };
 
   std::string path_;
@@ -185,14 +196,16 @@ class ComtradeSource : public RowSource {
 
 Status ComtradeSource::start(const config::RecordingSettings& settings) {
   std::vector<std::string> names;
-  for (const auto& analog : config_.analog) names.push_back(analog.name);
+  for (const auto& analog : config_.analog)
+    names.push_back(analog.name);
   const auto columns = columns_for(channels_, names, path_);
   if (!columns) return columns.error();
   columns_ = columns.value();
   for (const std::size_t column : columns_) {
     const ComtradeConfig::Analog& analog = config_.analog[column];
     const auto unit = volts_of(analog.unit);
-    if (!unit) info_.remarks.push_back("channel " + analog.name + " is in \"" + analog.unit + "\", taken as volts");
+    if (!unit)
+      info_.remarks.push_back("channel " + analog.name + " is in \"" + analog.unit + "\", taken as volts");
     double volts = unit.value_or(1.0);
     if (settings.primary != analog.is_primary && analog.primary > 0.0 && analog.secondary > 0.0) {
       volts *= settings.primary ? analog.primary / analog.secondary : analog.secondary / analog.primary;
@@ -208,21 +221,24 @@ Status ComtradeSource::start(const config::RecordingSettings& settings) {
   if (auto sound = check_rate(info_.rate_hz, path_); !sound) return sound;
 
   if (config_.revision != 1991 && config_.stated_revision != "1999" && config_.stated_revision != "2013") {
-    info_.remarks.push_back("the file states revision " + displayable(config_.stated_revision) + ", which no edition defines; read as " + std::to_string(config_.revision));
+    info_.remarks.push_back("the file states revision " + displayable(config_.stated_revision) +
+                            ", which no edition defines; read as " + std::to_string(config_.revision));
   }
   if (settings.begin) {
     info_.begin = *settings.begin;
   } else if (config_.begin) {
     info_.begin = *config_.begin;
-    if (!config_.zone_known) info_.remarks.emplace_back("the recorder's time zone is not stated; its time is taken as UTC");
+    if (!config_.zone_known)
+      info_.remarks.emplace_back("the recorder's time zone is not stated; its time is taken as UTC");
   } else {
     info_.dated = false;
     info_.remarks.emplace_back("the time of the first sample cannot be read");
   }
   char rate[32];
   std::snprintf(rate, sizeof rate, "%.6g", info_.rate_hz);
-  info_.what = "COMTRADE recording " + path_ + (config_.station.empty() ? "" : " of " + config_.station) + ", " + std::to_string(config_.analog.size()) +
-               " analog channels, " + rate + " samples a second" + (settings.primary ? ", primary values" : ", secondary values");
+  info_.what = "COMTRADE recording " + path_ + (config_.station.empty() ? "" : " of " + config_.station) +
+               ", " + std::to_string(config_.analog.size()) + " analog channels, " + rate +
+               " samples a second" + (settings.primary ? ", primary values" : ", secondary values");
   return kDone;
 }
 
@@ -246,8 +262,10 @@ void ComtradeSource::lay_out_sections() {
   for (const auto& section : config_.sections) {
     const auto rows = static_cast<double>(section.last - first + 1);
     const bool used = std::abs(section.rate_hz / info_.rate_hz - 1.0) <= kSameRate;
-    sections_.push_back({first, section.last, std::llround(index), section.rate_hz, std::llround(begin_s * 1e9), used});
-    index = used ? static_cast<double>(std::llround(index)) + rows : index + rows / section.rate_hz * info_.rate_hz;
+    sections_.push_back(
+        {first, section.last, std::llround(index), section.rate_hz, std::llround(begin_s * 1e9), used});
+    index = used ? static_cast<double>(std::llround(index)) + rows
+                 : index + rows / section.rate_hz * info_.rate_hz;
     begin_s += rows / section.rate_hz;
     if (!used) {
       ++left_out;
@@ -258,7 +276,9 @@ void ComtradeSource::lay_out_sections() {
   info_.frames = std::llround(index);
   if (left_out > 0) {
     char text[160];
-    std::snprintf(text, sizeof text, "%zu of %zu sampling sections (%.3f s) have another sample rate and are left out as a gap", left_out, sections_.size(), left_out_s);
+    std::snprintf(text, sizeof text,
+                  "%zu of %zu sampling sections (%.3f s) have another sample rate and are left out as a gap",
+                  left_out, sections_.size(), left_out_s);
     info_.remarks.emplace_back(text);
   }
 }
@@ -270,11 +290,15 @@ Status ComtradeSource::look_at_stamps() {
     const auto more = data_.next(row);
     if (!more) return more.error();
     if (!more.value()) break;
-    if (!row.stamp) return Error{path_, "no sample rate is given and the samples bear no time stamps", "the recording cannot be placed in time"};
+    if (!row.stamp)
+      return Error{path_, "no sample rate is given and the samples bear no time stamps",
+                   "the recording cannot be placed in time"};
     if (!ahead_.empty()) steps.push_back(*row.stamp - *ahead_.back().stamp);
     ahead_.push_back(std::move(row));
   }
-  if (steps.empty()) return Error{path_, "no sample rate is given and there are too few samples to see it", "the recording is empty or cut short"};
+  if (steps.empty())
+    return Error{path_, "no sample rate is given and there are too few samples to see it",
+                 "the recording is empty or cut short"};
   std::nth_element(steps.begin(), steps.begin() + static_cast<std::ptrdiff_t>(steps.size() / 2), steps.end());
   const std::int64_t usual = steps[steps.size() / 2];
   if (usual <= 0) return Error{path_, "the time stamps do not advance", "the file is damaged"};
@@ -296,7 +320,10 @@ Result<bool> ComtradeSource::read_row(Row& row) {
   if (!more) broken_ = more.error();
   if (!more || !more.value()) return more;
   if (data_row_.number <= last_number_) {
-    broken_ = Error{path_ + ", sample " + std::to_string(data_row_.number), "the sample numbers do not rise (the one before was " + std::to_string(last_number_) + ")", "data and configuration do not belong together, or the file is damaged"};
+    broken_ =
+        Error{path_ + ", sample " + std::to_string(data_row_.number),
+              "the sample numbers do not rise (the one before was " + std::to_string(last_number_) + ")",
+              "data and configuration do not belong together, or the file is damaged"};
     return *broken_;
   }
   last_number_ = data_row_.number;
@@ -319,7 +346,8 @@ Result<bool> ComtradeSource::read_row(Row& row) {
 }
 
 void ComtradeSource::place_by_section(Row& row, std::int64_t number) {
-  while (section_ + 1 < sections_.size() && number > sections_[section_].last_number) ++section_;
+  while (section_ + 1 < sections_.size() && number > sections_[section_].last_number)
+    ++section_;
   const Placed& section = sections_[section_];
   row.index = section.first_index + (number - section.first_number);
   if (!section.used) {
@@ -355,12 +383,14 @@ std::optional<std::string> sibling(const std::string& path, std::string_view end
   std::error_code code;
   if (fs::exists(wanted, code)) return wanted.string();
   const auto lower = [](std::string text) {
-    std::transform(text.begin(), text.end(), text.begin(), [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
+    std::transform(text.begin(), text.end(), text.begin(),
+                   [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
     return text;
   };
   const fs::path folder = wanted.has_parent_path() ? wanted.parent_path() : fs::path(".");
   for (fs::directory_iterator entry(folder, code), end; !code && entry != end; entry.increment(code)) {
-    if (lower(entry->path().filename().string()) == lower(wanted.filename().string())) return entry->path().string();
+    if (lower(entry->path().filename().string()) == lower(wanted.filename().string()))
+      return entry->path().string();
   }
   return std::nullopt;
 }
@@ -376,7 +406,9 @@ Status find_section(LineReader& lines, std::string_view name) {
   for (;;) {
     const auto more = lines.next(line);
     if (!more) return more.error();
-    if (!more.value()) return Error{lines.where(), "the combined file has no " + std::string(name) + " section", "the file is damaged"};
+    if (!more.value())
+      return Error{lines.where(), "the combined file has no " + std::string(name) + " section",
+                   "the file is damaged"};
     if (line.starts_with("---") && line.find(name) != std::string_view::npos) return kDone;
   }
 }
@@ -389,7 +421,9 @@ Result<std::unique_ptr<Source>> open_comtrade(const config::RecordingSettings& s
   std::string path = settings.path;
   if (!combined) {
     const auto beside = sibling(path, ".cfg");
-    if (!beside) return Error{path, "there is no configuration (.cfg) beside it", "a COMTRADE recording is a pair of .cfg and .dat"};
+    if (!beside)
+      return Error{path, "there is no configuration (.cfg) beside it",
+                   "a COMTRADE recording is a pair of .cfg and .dat"};
     path = *beside;
   }
   auto file = ByteReader::open(path);
@@ -408,7 +442,9 @@ Result<std::unique_ptr<Source>> open_comtrade(const config::RecordingSettings& s
     data.emplace(std::move(lines));
   } else {
     const auto beside = sibling(path, ".dat");
-    if (!beside) return Error{path, "there is no data file (.dat) beside it", "a COMTRADE recording is a pair of .cfg and .dat"};
+    if (!beside)
+      return Error{path, "there is no data file (.dat) beside it",
+                   "a COMTRADE recording is a pair of .cfg and .dat"};
     auto opened = ByteReader::open(*beside);
     if (!opened) return opened.error();
     if (opened.value().size() == 0) return Error{*beside, "the data file is empty", "name a recording"};

@@ -1,6 +1,6 @@
 #include <algorithm>
-#include <chrono>
 #include <cctype>
+#include <chrono>
 #include <cmath>
 #include <utility>
 
@@ -24,14 +24,21 @@ class ConfigLines {
     std::string_view line;
     const auto more = lines_.next(line);
     if (!more) return more.error();
-    if (!more.value() || line.starts_with("---")) return error(std::string("the configuration ends where ") + what + " should stand", "the file is cut short");
+    if (!more.value() || line.starts_with("---"))
+      return error(std::string("the configuration ends where ") + what + " should stand",
+                   "the file is cut short");
     split(line, ',', fields_);
-    if (fields_.size() < least) return error(std::string("too few fields for ") + what, std::to_string(least) + " at least");
+    if (fields_.size() < least)
+      return error(std::string("too few fields for ") + what, std::to_string(least) + " at least");
     return true;
   }
-  [[nodiscard]] std::string_view field(std::size_t i) const { return i < fields_.size() ? fields_[i] : std::string_view(); }
+  [[nodiscard]] std::string_view field(std::size_t i) const {
+    return i < fields_.size() ? fields_[i] : std::string_view();
+  }
   [[nodiscard]] std::size_t count() const { return fields_.size(); }
-  [[nodiscard]] Error error(std::string what, std::string remedy) const { return {lines_.where(), std::move(what), std::move(remedy)}; }
+  [[nodiscard]] Error error(std::string what, std::string remedy) const {
+    return {lines_.where(), std::move(what), std::move(remedy)};
+  }
 
  private:
   LineReader& lines_;
@@ -56,12 +63,15 @@ std::optional<int> offset_minutes(std::string_view text) {
   std::int64_t hours = 0;
   std::int64_t minutes = 0;
   if (!parse_integer(text.substr(0, h), hours) || hours > 14) return std::nullopt;
-  if (h != std::string_view::npos && h + 1 < text.size() && (!parse_integer(text.substr(h + 1), minutes) || minutes > 59)) return std::nullopt;
+  if (h != std::string_view::npos && h + 1 < text.size() &&
+      (!parse_integer(text.substr(h + 1), minutes) || minutes > 59))
+    return std::nullopt;
   return sign * static_cast<int>(hours * 60 + minutes);
 }
 
 /// Date and time of day; the 1991 revision writes the month first.
-std::optional<UtcNs> instant(std::string_view date, std::string_view time, bool month_first, bool& nanoseconds) {
+std::optional<UtcNs> instant(std::string_view date, std::string_view time, bool month_first,
+                             bool& nanoseconds) {
   std::vector<std::string_view> d;
   std::vector<std::string_view> t;
   split(date, '/', d);
@@ -71,8 +81,9 @@ std::optional<UtcNs> instant(std::string_view date, std::string_view time, bool 
   std::int64_t year = 0;
   std::int64_t hour = 0;
   std::int64_t minute = 0;
-  if (d.size() != 3 || t.size() != 3 || !parse_integer(d[month_first ? 1 : 0], day) || !parse_integer(d[month_first ? 0 : 1], month) ||
-      !parse_integer(d[2], year) || !parse_integer(t[0], hour) || !parse_integer(t[1], minute)) {
+  if (d.size() != 3 || t.size() != 3 || !parse_integer(d[month_first ? 1 : 0], day) ||
+      !parse_integer(d[month_first ? 0 : 1], month) || !parse_integer(d[2], year) ||
+      !parse_integer(t[0], hour) || !parse_integer(t[1], minute)) {
     return std::nullopt;
   }
   if (year < 100) year += year < 70 ? 2000 : 1900;
@@ -87,8 +98,11 @@ std::optional<UtcNs> instant(std::string_view date, std::string_view time, bool 
     if (!parse_integer(digits, ns) || ns < 0) return std::nullopt;
   }
   using namespace std::chrono;
-  const year_month_day ymd{std::chrono::year(static_cast<int>(year)), std::chrono::month(static_cast<unsigned>(month)), std::chrono::day(static_cast<unsigned>(day))};
-  if (year < 1970 || year > 2199 || day < 1 || month < 1 || !ymd.ok() || hour < 0 || hour > 23 || minute < 0 || minute > 59 || second < 0 || second > 60) {
+  const year_month_day ymd{std::chrono::year(static_cast<int>(year)),
+                           std::chrono::month(static_cast<unsigned>(month)),
+                           std::chrono::day(static_cast<unsigned>(day))};
+  if (year < 1970 || year > 2199 || day < 1 || month < 1 || !ymd.ok() || hour < 0 || hour > 23 ||
+      minute < 0 || minute > 59 || second < 0 || second > 60) {
     return std::nullopt;
   }
   const std::int64_t days = sys_days(ymd).time_since_epoch().count();
@@ -100,18 +114,20 @@ Status read_first_lines(ConfigLines& in, ComtradeConfig& config) {
   config.station = displayable(in.field(0));
   config.stated_revision = std::string(in.field(2));
   std::int64_t year = 1991;
-  if (!in.field(2).empty() && !parse_integer(in.field(2), year)) return in.error("\"" + displayable(in.field(2)) + "\" is no revision year", "1991, 1999 or 2013");
+  if (!in.field(2).empty() && !parse_integer(in.field(2), year))
+    return in.error("\"" + displayable(in.field(2)) + "\" is no revision year", "1991, 1999 or 2013");
   config.revision = year <= 1991 ? 1991 : year < 2013 ? 1999 : 2013;
 
   if (auto got = in.next(3, "the numbers of channels"); !got) return got.error();
   std::int64_t total = 0;
   std::int64_t analog = 0;
   std::int64_t status = 0;
-  if (!parse_integer(in.field(0), total) || !counted(in.field(1), 'A', analog) || !counted(in.field(2), 'D', status) || analog < 0 || status < 0 ||
-      total != analog + status) {
+  if (!parse_integer(in.field(0), total) || !counted(in.field(1), 'A', analog) ||
+      !counted(in.field(2), 'D', status) || analog < 0 || status < 0 || total != analog + status) {
     return in.error("the numbers of channels do not add up", "such as 6,4A,2D");
   }
-  if (analog == 0) return in.error("there are no analog channels", "a recording of voltages has at least one");
+  if (analog == 0)
+    return in.error("there are no analog channels", "a recording of voltages has at least one");
   if (total > kMostChannels) return in.error(std::to_string(total) + " channels", "10000 at most are read");
   config.status_channels = static_cast<std::size_t>(status);
   config.analog.resize(static_cast<std::size_t>(analog));
@@ -124,12 +140,16 @@ Status read_channels(ConfigLines& in, ComtradeConfig& config) {
     analog.name = displayable(in.field(1));
     analog.phase = displayable(in.field(2));
     analog.unit = displayable(in.field(4));
-    if (!parse_number(in.field(5), analog.a)) return in.error("the multiplier of channel " + analog.name + " is no number", "the sixth field is a");
-    if (!in.field(6).empty() && !parse_number(in.field(6), analog.b)) return in.error("the offset of channel " + analog.name + " is no number", "the seventh field is b");
+    if (!parse_number(in.field(5), analog.a))
+      return in.error("the multiplier of channel " + analog.name + " is no number", "the sixth field is a");
+    if (!in.field(6).empty() && !parse_number(in.field(6), analog.b))
+      return in.error("the offset of channel " + analog.name + " is no number", "the seventh field is b");
     if (!parse_number(in.field(9), analog.raw_max)) analog.raw_max = 0.0;
     if (config.revision == 1991) continue;
-    if (!in.field(10).empty() && !parse_number(in.field(10), analog.primary)) return in.error("the primary factor of channel " + analog.name + " is no number", "");
-    if (!in.field(11).empty() && !parse_number(in.field(11), analog.secondary)) return in.error("the secondary factor of channel " + analog.name + " is no number", "");
+    if (!in.field(10).empty() && !parse_number(in.field(10), analog.primary))
+      return in.error("the primary factor of channel " + analog.name + " is no number", "");
+    if (!in.field(11).empty() && !parse_number(in.field(11), analog.secondary))
+      return in.error("the secondary factor of channel " + analog.name + " is no number", "");
     const std::string_view side = in.field(12);
     analog.is_primary = !side.empty() && (side.front() == 'P' || side.front() == 'p');
   }
@@ -143,17 +163,20 @@ Status read_sections(ConfigLines& in, ComtradeConfig& config) {
   if (auto got = in.next(1, "the line frequency"); !got) return got.error();
   if (auto got = in.next(1, "the number of sample rates"); !got) return got.error();
   std::int64_t count = 0;
-  if (!parse_integer(in.field(0), count) || count < 0 || count > kMostSections) return in.error("the number of sample rates cannot be read", "0, 1 or more");
+  if (!parse_integer(in.field(0), count) || count < 0 || count > kMostSections)
+    return in.error("the number of sample rates cannot be read", "0, 1 or more");
   std::int64_t last = 0;
   for (std::int64_t i = 0; i < std::max<std::int64_t>(count, 1); ++i) {
     if (auto got = in.next(2, "a sample rate and its last sample"); !got) return got.error();
     ComtradeConfig::Section section;
-    if (!parse_number(in.field(0), section.rate_hz) || !parse_integer(in.field(1), section.last)) return in.error("a sample rate or its last sample cannot be read", "such as 6400,1280");
+    if (!parse_number(in.field(0), section.rate_hz) || !parse_integer(in.field(1), section.last))
+      return in.error("a sample rate or its last sample cannot be read", "such as 6400,1280");
     if (count == 0) break;
     if (!(section.rate_hz > 0.0) || section.rate_hz > kHighestRate_hz) {
       return in.error("a sample rate of " + std::string(in.field(0)) + " Hz", "up to 1 MHz can be measured");
     }
-    if (section.last <= last) return in.error("a section ends before it begins", "the numbers of the last samples must rise");
+    if (section.last <= last)
+      return in.error("a section ends before it begins", "the numbers of the last samples must rise");
     last = section.last;
     config.sections.push_back(section);
   }
@@ -166,7 +189,8 @@ Status read_rest(ConfigLines& in, ComtradeConfig& config) {
   if (auto got = in.next(2, "the time of the trigger"); !got) return got.error();
   if (auto got = in.next(1, "the kind of the data file"); !got) return got.error();
   std::string kind(in.field(0));
-  std::transform(kind.begin(), kind.end(), kind.begin(), [](unsigned char c) { return static_cast<char>(std::toupper(c)); });
+  std::transform(kind.begin(), kind.end(), kind.begin(),
+                 [](unsigned char c) { return static_cast<char>(std::toupper(c)); });
   if (kind == "ASCII") {
     config.data = ComtradeConfig::Data::ascii;
   } else if (kind == "BINARY") {
@@ -176,11 +200,13 @@ Status read_rest(ConfigLines& in, ComtradeConfig& config) {
   } else if (kind == "FLOAT32") {
     config.data = ComtradeConfig::Data::float32;
   } else {
-    return in.error("\"" + displayable(kind) + "\" is no kind of data file", "ASCII, BINARY, BINARY32 or FLOAT32");
+    return in.error("\"" + displayable(kind) + "\" is no kind of data file",
+                    "ASCII, BINARY, BINARY32 or FLOAT32");
   }
   if (config.revision == 1991) return kDone;
   if (auto got = in.next(1, "the time multiplier"); !got) return kDone;  // many programs leave it out
-  if (!parse_number(in.field(0), config.stamp_multiplier) || !(config.stamp_multiplier > 0.0)) config.stamp_multiplier = 1.0;
+  if (!parse_number(in.field(0), config.stamp_multiplier) || !(config.stamp_multiplier > 0.0))
+    config.stamp_multiplier = 1.0;
   if (config.revision < 2013) return kDone;
   if (auto got = in.next(1, "the time code"); !got) return kDone;
   if (const auto minutes = offset_minutes(in.field(0))) {

@@ -32,7 +32,7 @@ Dialect dialect_of(std::string_view line) {
 }
 
 struct TimeCell {
-  double seconds = 0.0;       // since the first row's, or since 1970 if absolute
+  double seconds = 0.0;  // since the first row's, or since 1970 if absolute
   std::int64_t utc_ns = 0;
   bool absolute = false;
 };
@@ -51,13 +51,15 @@ std::optional<TimeCell> time_of(std::string_view cell, bool decimal_comma) {
 
 class CsvSource : public RowSource {
  public:
-  CsvSource(LineReader lines, const std::vector<config::ChannelSettings>& channels) : RowSource(channels), lines_(std::move(lines)) {}
+  CsvSource(LineReader lines, const std::vector<config::ChannelSettings>& channels)
+      : RowSource(channels), lines_(std::move(lines)) {}
 
   Status start(const config::RecordingSettings& settings);
 
   [[nodiscard]] std::string end_remark() const override {
     std::string remark = torn_ ? "the file ends in the middle of a row, which was left out" : "end of file";
-    if (missing_rows() > 0) remark += "; " + std::to_string(missing_rows()) + " rows held no number and were left out";
+    if (missing_rows() > 0)
+      remark += "; " + std::to_string(missing_rows()) + " rows held no number and were left out";
     return remark;
   }
   [[nodiscard]] double progress() const override { return lines_.progress(); }
@@ -125,8 +127,10 @@ bool CsvSource::is_header() const {
   // A header has a cell that is neither a number, nor a time, nor a way to say that there is none.
   return std::any_of(fields_.begin(), fields_.end(), [this](std::string_view cell) {
     std::string lower(cell);
-    std::transform(lower.begin(), lower.end(), lower.begin(), [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
-    return !cell.empty() && lower != "nan" && lower != "na" && lower != "null" && !time_of(cell, dialect_.decimal_comma);
+    std::transform(lower.begin(), lower.end(), lower.begin(),
+                   [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
+    return !cell.empty() && lower != "nan" && lower != "na" && lower != "null" &&
+           !time_of(cell, dialect_.decimal_comma);
   });
 }
 
@@ -145,16 +149,19 @@ Status CsvSource::start(const config::RecordingSettings& settings) {
   width_ = fields_.size();
   std::vector<std::string> names(width_);
   if (is_header()) {
-    for (std::size_t i = 0; i < width_; ++i) names[i] = std::string(fields_[i]);
+    for (std::size_t i = 0; i < width_; ++i)
+      names[i] = std::string(fields_[i]);
     ahead_.pop_front();
-    if (ahead_.empty()) return Error{lines_.path(), "the file holds a header and no rows", "name a recording"};
+    if (ahead_.empty())
+      return Error{lines_.path(), "the file holds a header and no rows", "name a recording"};
   }
   if (auto found = find_time_column(settings, names); !found) return found;
 
   // Columns are counted without the time where no name or number says otherwise.
   auto wanted = channels_;
   for (std::size_t c = 0; c < wanted.size(); ++c) {
-    if (wanted[c].source_channel.empty() && time_column_ && c >= *time_column_) wanted[c].source_channel = std::to_string(c + 2);
+    if (wanted[c].source_channel.empty() && time_column_ && c >= *time_column_)
+      wanted[c].source_channel = std::to_string(c + 2);
   }
   const auto columns = columns_for(wanted, names, lines_.path());
   if (!columns) return columns.error();
@@ -172,12 +179,13 @@ Status CsvSource::start(const config::RecordingSettings& settings) {
   info_.dated = settings.begin.has_value() || absolute_;
   char rate[32];
   std::snprintf(rate, sizeof rate, "%.6g", info_.rate_hz);
-  info_.what = "text table " + lines_.path() + ", " + std::to_string(width_) + " columns, " + rate + " samples a second" +
-               (time_column_ ? " by its time column" : " as given");
+  info_.what = "text table " + lines_.path() + ", " + std::to_string(width_) + " columns, " + rate +
+               " samples a second" + (time_column_ ? " by its time column" : " as given");
   return kDone;
 }
 
-Status CsvSource::find_time_column(const config::RecordingSettings& settings, const std::vector<std::string>& names) {
+Status CsvSource::find_time_column(const config::RecordingSettings& settings,
+                                   const std::vector<std::string>& names) {
   if (!settings.time_column.empty()) {
     config::ChannelSettings as_channel;
     as_channel.source_channel = settings.time_column;
@@ -189,7 +197,8 @@ Status CsvSource::find_time_column(const config::RecordingSettings& settings, co
   if (settings.rate_hz) return kDone;
   split(ahead_.front().text, dialect_.separator, fields_);
   if (width_ < 2 || !time_of(fields_.front(), dialect_.decimal_comma)) {
-    return Error{lines_.path(), "the first column holds no time, and no sample rate is given", "give the rate, or name the time column"};
+    return Error{lines_.path(), "the first column holds no time, and no sample rate is given",
+                 "give the rate, or name the time column"};
   }
   time_column_ = 0;
   return kDone;
@@ -202,19 +211,25 @@ Status CsvSource::look_at_times() {
     split(line.text, dialect_.separator, fields_);
     if (fields_.size() != width_) continue;
     const auto time = time_of(fields_[*time_column_], dialect_.decimal_comma);
-    if (!time) return error_at(line.number, "\"" + displayable(fields_[*time_column_]) + "\" is no time", "seconds, or ISO 8601 with an offset; or name the time column");
+    if (!time)
+      return error_at(line.number, "\"" + displayable(fields_[*time_column_]) + "\" is no time",
+                      "seconds, or ISO 8601 with an offset; or name the time column");
     if (times.empty()) {
       first_ns = time->utc_ns;
       absolute_ = time->absolute;
     }
     times.push_back(time->seconds);
   }
-  if (times.size() < 2) return Error{lines_.path(), "one row is not enough to see the sample rate", "give the rate"};
+  if (times.size() < 2)
+    return Error{lines_.path(), "one row is not enough to see the sample rate", "give the rate"};
   std::vector<double> steps;
-  for (std::size_t i = 1; i < times.size(); ++i) steps.push_back(times[i] - times[i - 1]);
+  for (std::size_t i = 1; i < times.size(); ++i)
+    steps.push_back(times[i] - times[i - 1]);
   std::nth_element(steps.begin(), steps.begin() + static_cast<std::ptrdiff_t>(steps.size() / 2), steps.end());
   const double usual = steps[steps.size() / 2];
-  if (!(usual > 0.0)) return Error{lines_.path(), "the time does not advance from row to row", "the time column must be finer than the sampling interval"};
+  if (!(usual > 0.0))
+    return Error{lines_.path(), "the time does not advance from row to row",
+                 "the time column must be finer than the sampling interval"};
   // Coarse stamps jitter; over many rows that averages out, with the gaps left out.
   double sum = 0.0;
   std::size_t count = 0;
@@ -235,7 +250,8 @@ Status CsvSource::place(Row& row, std::string_view cell, std::int64_t line) {
   if (!time) return error_at(line, "\"" + displayable(cell) + "\" is no time", "every row needs its time");
   const double intervals = (time->seconds - last_s_) * info_.rate_hz;
   if (index_ >= 0 && !(intervals > 0.0)) {
-    return error_at(line, intervals < 0.0 ? "the time goes backwards" : "the time does not advance", "rows must come in the order of time");
+    return error_at(line, intervals < 0.0 ? "the time goes backwards" : "the time does not advance",
+                    "rows must come in the order of time");
   }
   std::int64_t advance = 1;
   if (intervals > 1.5) {
@@ -249,7 +265,8 @@ Status CsvSource::place(Row& row, std::string_view cell, std::int64_t line) {
   if (index_ > 0 && (advance > 1 || index_ - anchored_at_ >= kAnchorEvery)) {
     anchored_at_ = index_;
     const std::int64_t since_ns = std::llround((time->seconds - first_s_) * 1e9);
-    row.anchor = measure::ClockAnchor{{index_}, absolute_ ? UtcNs{time->utc_ns} : info_.begin + since_ns, info_.rate_hz};
+    row.anchor = measure::ClockAnchor{
+        {index_}, absolute_ ? UtcNs{time->utc_ns} : info_.begin + since_ns, info_.rate_hz};
   }
   return kDone;
 }
@@ -265,7 +282,10 @@ Result<bool> CsvSource::read_row(Row& row) {
       torn_ = true;
       return false;
     }
-    broken_ = error_at(line_.number, std::to_string(fields_.size()) + " columns, where the first row has " + std::to_string(width_), "the rows must be alike");
+    broken_ = error_at(
+        line_.number,
+        std::to_string(fields_.size()) + " columns, where the first row has " + std::to_string(width_),
+        "the rows must be alike");
     return *broken_;
   }
   row.gap = measure::GapCause::samples_lost;

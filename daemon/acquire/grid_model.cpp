@@ -9,22 +9,26 @@ namespace {
 
 using What = config::ScriptedHappening::What;
 
-// With linear interpolation the error is (2 pi h / 4096)^2 / 8 of a harmonic of order h: 3e-7 of the fundamental,
-// 7e-5 of a 15th.
+// With linear interpolation the error is (2 pi h / 4096)^2 / 8 of a harmonic of order h: 3e-7 of the
+// fundamental, 7e-5 of a 15th.
 constexpr std::size_t kTable = 4096;
 constexpr double kTwoPi = 2.0 * std::numbers::pi;
 
 unsigned bits_of(const std::vector<Phase>& phases) {
   unsigned bits = phases.empty() ? 7U : 0U;
-  for (const Phase phase : phases) bits |= 1U << static_cast<unsigned>(phase);
+  for (const Phase phase : phases)
+    bits |= 1U << static_cast<unsigned>(phase);
   return bits;
 }
 
-bool changes_grid(What what) { return what == What::sag || what == What::swell || what == What::interruption; }
+bool changes_grid(What what) {
+  return what == What::sag || what == What::swell || what == What::interruption;
+}
 
 }  // namespace
 
-GridModel::GridModel(const config::SimulatorSettings& settings, double nominal_v, double nominal_hz, int phases)
+GridModel::GridModel(const config::SimulatorSettings& settings, double nominal_v, double nominal_hz,
+                     int phases)
     : rate_hz_(settings.rate_hz),
       voltage_v_(settings.grid.voltage_v > 0.0 ? settings.grid.voltage_v : nominal_v),
       nominal_hz_(nominal_hz),
@@ -35,35 +39,41 @@ GridModel::GridModel(const config::SimulatorSettings& settings, double nominal_v
     const double angle = kTwoPi * static_cast<double>(i) / kTable;
     double value = std::sin(angle);
     // Odd harmonics at 180 degrees flatten the top, as rectifiers do.
-    for (const auto& [order, pct] : grid_.harmonics_pct) value += pct / 100.0 * std::sin(order * angle + std::numbers::pi);
+    for (const auto& [order, pct] : grid_.harmonics_pct)
+      value += pct / 100.0 * std::sin(order * angle + std::numbers::pi);
     table_[i] = static_cast<float>(std::numbers::sqrt2 * value);
   }
   for (const auto& happening : settings.script) {
     if (happening.what == What::level) {
       const double full = happening.at_s + happening.ramp_s;
       const double hold = full + happening.lasting_s;
-      levels_.push_back({happening.at_s, full, hold, hold + happening.ramp_s, happening.to_v, bits_of(happening.phases)});
+      levels_.push_back(
+          {happening.at_s, full, hold, hold + happening.ramp_s, happening.to_v, bits_of(happening.phases)});
     } else if (changes_grid(happening.what)) {
       waiting_.push_back(happening);
     }
   }
-  std::stable_sort(waiting_.begin(), waiting_.end(), [](const auto& a, const auto& b) { return a.at_s > b.at_s; });
+  std::stable_sort(waiting_.begin(), waiting_.end(),
+                   [](const auto& a, const auto& b) { return a.at_s > b.at_s; });
 
   Random random(settings.seed);
   double share = 0.0;
   for (std::size_t i = 0; i < voltage_wander_.size(); ++i) {
     // A day, and faster parts down to some minutes.
     static constexpr double kPeriods_s[] = {86400.0, 19000.0, 4700.0, 610.0};
-    voltage_wander_[i] = {1.0 / (kPeriods_s[i] * (0.9 + 0.2 * random.unit())), kTwoPi * random.unit(), 0.5 + random.unit()};
+    voltage_wander_[i] = {1.0 / (kPeriods_s[i] * (0.9 + 0.2 * random.unit())), kTwoPi * random.unit(),
+                          0.5 + random.unit()};
     share += voltage_wander_[i].share;
   }
-  for (Wander& wander : voltage_wander_) wander.share /= share;
+  for (Wander& wander : voltage_wander_)
+    wander.share /= share;
   share = 0.0;
   for (Wander& wander : frequency_wander_) {
     wander = {1.0 / (60.0 + 1500.0 * random.unit()), kTwoPi * random.unit(), 0.5 + random.unit()};
     share += wander.share;
   }
-  for (Wander& wander : frequency_wander_) wander.share /= share;
+  for (Wander& wander : frequency_wander_)
+    wander.share /= share;
   for (std::size_t p = 0; p < phases_; ++p) {
     noise_.emplace_back(random.next(), grid_.noise_v);
     volts_[p] = levelled_v(wandering_v(0.0), p, 0.0);
@@ -72,7 +82,8 @@ GridModel::GridModel(const config::SimulatorSettings& settings, double nominal_v
 
 double GridModel::wandering_v(double t_s) const {
   double sum = 0.0;
-  for (const Wander& wander : voltage_wander_) sum += wander.share * std::sin(kTwoPi * wander.hz * t_s + wander.phase);
+  for (const Wander& wander : voltage_wander_)
+    sum += wander.share * std::sin(kTwoPi * wander.hz * t_s + wander.phase);
   return voltage_v_ * (1.0 + grid_.wander_pct / 100.0 * sum);
 }
 
@@ -89,7 +100,8 @@ double GridModel::levelled_v(double volts, std::size_t phase, double t_s) const 
 
 double GridModel::frequency_hz(double t_s) const {
   double sum = 0.0;
-  for (const Wander& wander : frequency_wander_) sum += wander.share * std::sin(kTwoPi * wander.hz * t_s + wander.phase);
+  for (const Wander& wander : frequency_wander_)
+    sum += wander.share * std::sin(kTwoPi * wander.hz * t_s + wander.phase);
   return nominal_hz_ + grid_.frequency_drift_hz * sum;
 }
 
@@ -111,7 +123,8 @@ void GridModel::apply_changes(std::size_t phase, float* volts) const {
     if ((change.phases >> phase & 1U) == 0) continue;
     const std::int64_t from = std::clamp<std::int64_t>(change.begin - frame_, 0, kChunk);
     const std::int64_t to = std::clamp<std::int64_t>(change.end - frame_, 0, kChunk);
-    for (std::int64_t i = from; i < to; ++i) volts[i] *= static_cast<float>(change.factor);
+    for (std::int64_t i = from; i < to; ++i)
+      volts[i] *= static_cast<float>(change.factor);
   }
 }
 

@@ -11,8 +11,8 @@
 
 namespace tramline::acquire {
 
-/// The simulated supply: a waveform of slowly wandering voltage and frequency, with harmonics, noise, and what the script
-/// does to it, for one or three phases. The same settings give the same samples.
+/// The simulated supply: a waveform of slowly wandering voltage and frequency, with harmonics, noise, and
+/// what the script does to it, for one or three phases. The same settings give the same samples.
 class GridModel {
  public:
   /// Frames are made in chunks of this many; level and frequency move linearly within one.
@@ -49,9 +49,9 @@ class GridModel {
   double nominal_hz_;
   std::size_t phases_;
   config::GridSettings grid_;
-  std::vector<float> table_;        // one cycle of fundamental and harmonics, 1 V r.m.s. of fundamental
+  std::vector<float> table_;  // one cycle of fundamental and harmonics, 1 V r.m.s. of fundamental
   std::vector<config::ScriptedHappening> waiting_;  // not yet placed on the wave; the next one last
-  std::vector<Change> changes_;     // under way or about to begin
+  std::vector<Change> changes_;                     // under way or about to begin
   std::vector<Level> levels_;
   struct Wander {
     double hz, phase, share;
@@ -59,9 +59,9 @@ class GridModel {
   std::array<Wander, 4> voltage_wander_{};
   std::array<Wander, 3> frequency_wander_{};
   std::int64_t frame_ = 0;
-  double cycles_ = 0.0;             // of L1 since the begin
-  std::array<double, 3> volts_{};   // r.m.s. at `frame_`, scripted changes apart
-  std::vector<WhiteNoise> noise_;   // a phase each
+  double cycles_ = 0.0;            // of L1 since the begin
+  std::array<double, 3> volts_{};  // r.m.s. at `frame_`, scripted changes apart
+  std::vector<WhiteNoise> noise_;  // a phase each
 };
 
 }  // namespace tramline::acquire

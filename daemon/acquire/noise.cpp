@@ -14,14 +14,16 @@ WhiteNoise::WhiteNoise(std::uint64_t seed, double rms) : random_(seed), silent_(
     power += static_cast<double>(value) * static_cast<double>(value);
   }
   const double scale = rms / std::sqrt(power / static_cast<double>(table_.size()));
-  for (float& value : table_) value = static_cast<float>(static_cast<double>(value) * scale);
+  for (float& value : table_)
+    value = static_cast<float>(static_cast<double>(value) * scale);
 }
 
 void WhiteNoise::add_to(float* samples, std::size_t count) {
   if (silent_) return;
   for (std::size_t i = 0; i < count; i += 4) {
     const std::uint64_t bits = random_.next();
-    for (std::size_t k = 0; k < 4; ++k) samples[i + k] += table_[(bits >> (16U * k)) & 0xfffU];
+    for (std::size_t k = 0; k < 4; ++k)
+      samples[i + k] += table_[(bits >> (16U * k)) & 0xfffU];
   }
 }
 

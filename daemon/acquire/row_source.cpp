@@ -49,14 +49,17 @@ Result<bool> RowSource::next(measure::Block& block, std::size_t most_frames) {
     }
     if (frames == 0) {
       shape.first = {row_.index};
-      shape.gap = row_.index == expected_ ? measure::GapCause::none : missing_before_ ? measure::GapCause::not_a_number : row_.gap;
+      shape.gap = row_.index == expected_ ? measure::GapCause::none
+                  : missing_before_       ? measure::GapCause::not_a_number
+                                          : row_.gap;
       if (anchor_) shape.anchor = moved(*anchor_, shape.first);
       anchor_.reset();
       missing_before_ = false;
     }
     for (std::size_t c = 0; c < width; ++c) {
       const double volts = (row_.raw[c] + channels_[c].offset) * channels_[c].scale;
-      const bool limit = (!row_.at_limit.empty() && row_.at_limit[c]) || (channels_[c].range_v > 0.0 && std::abs(volts) >= channels_[c].range_v);
+      const bool limit = (!row_.at_limit.empty() && row_.at_limit[c]) ||
+                         (channels_[c].range_v > 0.0 && std::abs(volts) >= channels_[c].range_v);
       if (limit) shape.over_range.push_back({c, frames, 1});
       rows_.push_back(static_cast<float>(volts));
     }
@@ -72,7 +75,8 @@ Result<bool> RowSource::next(measure::Block& block, std::size_t most_frames) {
   block.over_range = shape.over_range;
   for (std::size_t c = 0; c < width; ++c) {
     const auto volts = block.channel(c);
-    for (std::size_t i = 0; i < frames; ++i) volts[i] = rows_[i * width + c];
+    for (std::size_t i = 0; i < frames; ++i)
+      volts[i] = rows_[i * width + c];
   }
   return true;
 }

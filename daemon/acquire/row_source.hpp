@@ -11,8 +11,8 @@
 
 namespace tramline::acquire {
 
-/// What the row-wise recordings (CSV, COMTRADE) share: rows in, blocks out. Rows without a number, jumps in the numbering
-/// and changes of rate become gaps and anchors here.
+/// What the row-wise recordings (CSV, COMTRADE) share: rows in, blocks out. Rows without a number, jumps in
+/// the numbering and changes of rate become gaps and anchors here.
 class RowSource : public Source {
  public:
   [[nodiscard]] const StreamInfo& info() const override { return info_; }
@@ -20,11 +20,12 @@ class RowSource : public Source {
 
  protected:
   struct Row {
-    std::int64_t index = 0;      ///< number of the frame in the stream
-    measure::GapCause gap = measure::GapCause::samples_lost;  ///< why frames before it are missing, if they are
-    bool missing = false;        ///< it holds no number for a wanted channel
-    std::vector<double> raw;     ///< a wanted channel each
-    std::vector<bool> at_limit;  ///< empty, or whether the channel stands at the recorder's limit
+    std::int64_t index = 0;  ///< number of the frame in the stream
+    measure::GapCause gap =
+        measure::GapCause::samples_lost;  ///< why frames before it are missing, if they are
+    bool missing = false;                 ///< it holds no number for a wanted channel
+    std::vector<double> raw;              ///< a wanted channel each
+    std::vector<bool> at_limit;           ///< empty, or whether the channel stands at the recorder's limit
     std::optional<measure::ClockAnchor> anchor;
   };
   explicit RowSource(const std::vector<config::ChannelSettings>& channels) : channels_(channels) {}
@@ -42,8 +43,8 @@ class RowSource : public Source {
   [[nodiscard]] bool finite(const Row& row) const;
 
   Row row_;
-  bool holding_ = false;       // `row_` begins the next block
-  std::vector<float> rows_;    // interleaved volts of the block being filled
+  bool holding_ = false;     // `row_` begins the next block
+  std::vector<float> rows_;  // interleaved volts of the block being filled
   std::int64_t expected_ = 0;
   std::int64_t missing_ = 0;
   bool missing_before_ = false;

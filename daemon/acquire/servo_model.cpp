@@ -9,7 +9,8 @@ namespace {
 using What = config::ScriptedHappening::What;
 
 constexpr double kLatchWithin = 0.002;  // of ratio
-constexpr double kLeastMotor_v = 50.0;  // the mains feeds the motor; lowest usable input, common practice, no source
+constexpr double kLeastMotor_v =
+    50.0;  // the mains feeds the motor; lowest usable input, common practice, no source
 
 bool concerns_servo(What what) {
   return what != What::sag && what != What::swell && what != What::interruption && what != What::level;
@@ -17,10 +18,12 @@ bool concerns_servo(What what) {
 
 }  // namespace
 
-ServoModel::ServoModel(const config::ServoSettings& servo, const std::vector<config::ScriptedHappening>& script, double nominal_v,
-                       double input_v, std::uint64_t seed)
+ServoModel::ServoModel(const config::ServoSettings& servo,
+                       const std::vector<config::ScriptedHappening>& script, double nominal_v, double input_v,
+                       std::uint64_t seed)
     : servo_(servo), nominal_v_(nominal_v), load_a_(servo.load_a), random_(seed) {
-  std::copy_if(script.begin(), script.end(), std::back_inserter(script_), [](const auto& h) { return concerns_servo(h.what); });
+  std::copy_if(script.begin(), script.end(), std::back_inserter(script_),
+               [](const auto& h) { return concerns_servo(h.what); });
   // At rest with the load on.
   const double droop = 1.0 + servo_.output_impedance_ohm * load_a_ / nominal_v_;
   ratio_ = std::clamp(servo_.target_v * droop / input_v, servo_.ratio_min, servo_.ratio_max);
@@ -36,20 +39,33 @@ ServoModel::Faults ServoModel::faults_now() {
     if (t_s_ < happening.at_s) continue;
     if (happening.lasting_s > 0.0 && t_s_ >= happening.at_s + happening.lasting_s) continue;
     switch (happening.what) {
-      case What::servo_stuck: faults.stuck = true; break;
+      case What::servo_stuck:
+        faults.stuck = true;
+        break;
       case What::servo_stuck_at:
         held_at_ratio = true;
         latched_ = latched_ || std::abs(ratio_ - happening.ratio) <= kLatchWithin;
         break;
-      case What::servo_slow: faults.speed = happening.factor; break;
-      case What::servo_reversed: faults.reversed = true; break;
-      case What::servo_hunting: faults.filter = happening.factor; break;
-      case What::output_open: faults.open = true; break;
-      case What::load_step: load_a_ = happening.to_a; break;
+      case What::servo_slow:
+        faults.speed = happening.factor;
+        break;
+      case What::servo_reversed:
+        faults.reversed = true;
+        break;
+      case What::servo_hunting:
+        faults.filter = happening.factor;
+        break;
+      case What::output_open:
+        faults.open = true;
+        break;
+      case What::load_step:
+        load_a_ = happening.to_a;
+        break;
       case What::sag:
       case What::swell:
       case What::interruption:
-      case What::level: break;
+      case What::level:
+        break;
     }
   }
   if (!held_at_ratio) latched_ = false;

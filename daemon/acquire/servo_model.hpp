@@ -8,21 +8,23 @@
 
 namespace tramline::acquire {
 
-/// One phase of a servo regulator: a window comparator behind a first-order sensing filter drives a motor of constant
-/// speed, which turns the wiper between its end stops. Faults come by script. Steps in time; knows nothing of waveforms.
+/// One phase of a servo regulator: a window comparator behind a first-order sensing filter drives a motor of
+/// constant speed, which turns the wiper between its end stops. Faults come by script. Steps in time; knows
+/// nothing of waveforms.
 class ServoModel {
  public:
-  /// Settings complete: nothing in `servo` is left to the site. `nominal_v`: the input at which the speed is stated. Starts at rest,
-  /// with the ratio that puts `input_v` on target.
-  ServoModel(const config::ServoSettings& servo, const std::vector<config::ScriptedHappening>& script, double nominal_v, double input_v,
-             std::uint64_t seed);
+  /// Settings complete: nothing in `servo` is left to the site. `nominal_v`: the input at which the speed is
+  /// stated. Starts at rest, with the ratio that puts `input_v` on target.
+  ServoModel(const config::ServoSettings& servo, const std::vector<config::ScriptedHappening>& script,
+             double nominal_v, double input_v, std::uint64_t seed);
 
   /// Advances by `step_s` at an input of `input_v` r.m.s.
   void advance(double input_v, double step_s);
 
   /// Position of the wiper: turns ratio at no load.
   [[nodiscard]] double ratio() const { return ratio_; }
-  /// Output over input voltage now: the ratio, less what the load drops in the output's impedance; 0 while the output is open.
+  /// Output over input voltage now: the ratio, less what the load drops in the output's impedance; 0 while
+  /// the output is open.
   [[nodiscard]] double gain() const { return gain_; }
 
  private:
@@ -44,12 +46,12 @@ class ServoModel {
   double ratio_;
   double gain_ = 1.0;
   double sensed_v_;
-  int direction_ = 0;      // of the motor
+  int direction_ = 0;  // of the motor
   double coasting_s_ = 0.0;
-  bool latched_ = false;   // stuck at the ratio asked for
+  bool latched_ = false;  // stuck at the ratio asked for
   double t_s_ = 0.0;
   double load_a_;
-  bool stepped_ = false;   // the random part of the load is on
+  bool stepped_ = false;  // the random part of the load is on
   double next_step_s_;
   Random random_;
 };

@@ -33,15 +33,18 @@ config::ServoSettings complete(config::ServoSettings servo, const config::Regula
 class CycleRms {
  public:
   CycleRms(double rate_hz, double nominal_hz, double start_v)
-      : energies_(static_cast<std::size_t>(std::max(1L, std::lround(rate_hz / nominal_hz / static_cast<double>(kChunk)))),
+      : energies_(static_cast<std::size_t>(
+                      std::max(1L, std::lround(rate_hz / nominal_hz / static_cast<double>(kChunk)))),
                   start_v * start_v * static_cast<double>(kChunk)) {}
   double take(const float* volts) {
     float energy = 0.0F;
-    for (std::size_t i = 0; i < kChunk; ++i) energy += volts[i] * volts[i];
+    for (std::size_t i = 0; i < kChunk; ++i)
+      energy += volts[i] * volts[i];
     energies_[next_] = static_cast<double>(energy);
     next_ = (next_ + 1) % energies_.size();
     double sum = 0.0;
-    for (const double e : energies_) sum += e;
+    for (const double e : energies_)
+      sum += e;
     return std::sqrt(sum / static_cast<double>(energies_.size() * kChunk));
   }
 
@@ -56,21 +59,25 @@ class Simulator : public Source {
       : settings_(settings), grid_(settings, site.nominal_v, site.nominal_hz, site.phases) {
     info_.rate_hz = settings.rate_hz;
     info_.begin = settings.begin.value_or(now);
-    info_.what = "simulator, " + std::to_string(std::lround(settings.rate_hz)) + " samples a second, seed " + std::to_string(settings.seed);
+    info_.what = "simulator, " + std::to_string(std::lround(settings.rate_hz)) + " samples a second, seed " +
+                 std::to_string(settings.seed);
     info_.remarks.emplace_back("the samples are simulated: no supply was measured");
     if (settings.run_for_s > 0.0) info_.frames = std::llround(settings.run_for_s * settings.rate_hz);
 
     const double input_v = settings.grid.voltage_v > 0.0 ? settings.grid.voltage_v : site.nominal_v;
     Random random(settings.seed ^ 0x736572766fU);
     for (int p = 0; p < site.phases; ++p) {
-      PhaseState& phase = phases_.emplace_back(PhaseState{{}, {}, CycleRms(settings.rate_hz, site.nominal_hz, input_v), {}, 1.0});
+      PhaseState& phase = phases_.emplace_back(
+          PhaseState{{}, {}, CycleRms(settings.rate_hz, site.nominal_hz, input_v), {}, 1.0});
       if (site.regulator) {
-        phase.servo.emplace(complete(settings.servo, *site.regulator), settings.script, site.nominal_v, input_v, random.next());
+        phase.servo.emplace(complete(settings.servo, *site.regulator), settings.script, site.nominal_v,
+                            input_v, random.next());
         phase.gain = phase.servo->gain();
       }
     }
     for (const auto& channel : site.channels) {
-      channels_.push_back({channel, std::array<float, kChunk>{}, WhiteNoise(random.next(), settings.grid.sensor_noise_v)});
+      channels_.push_back(
+          {channel, std::array<float, kChunk>{}, WhiteNoise(random.next(), settings.grid.sensor_noise_v)});
     }
   }
 
@@ -78,7 +85,8 @@ class Simulator : public Source {
 
   Result<bool> next(measure::Block& block, std::size_t most_frames) override {
     const std::int64_t left = info_.frames.value_or(std::numeric_limits<std::int64_t>::max()) - given_;
-    const auto frames = static_cast<std::size_t>(std::min<std::int64_t>(left, static_cast<std::int64_t>(most_frames)));
+    const auto frames =
+        static_cast<std::size_t>(std::min<std::int64_t>(left, static_cast<std::int64_t>(most_frames)));
     if (frames == 0) return false;
     block.resize(channels_.size(), frames);
     block.begin({given_});
@@ -119,9 +127,11 @@ class Simulator : public Source {
 
   void make_chunk() {
     std::array<float*, 3> inputs{};
-    for (std::size_t p = 0; p < phases_.size(); ++p) inputs[p] = phases_[p].input.data();
+    for (std::size_t p = 0; p < phases_.size(); ++p)
+      inputs[p] = phases_[p].input.data();
     grid_.next(inputs);
-    for (PhaseState& phase : phases_) regulate(phase);
+    for (PhaseState& phase : phases_)
+      regulate(phase);
     for (ChannelState& channel : channels_) {
       const PhaseState& phase = phases_[static_cast<std::size_t>(channel.settings.channel.phase)];
       const auto& ideal = channel.settings.channel.side == Side::input ? phase.input : phase.output;
@@ -129,10 +139,12 @@ class Simulator : public Source {
       channel.noise.add_to(channel.chunk.data(), kChunk);
       const auto scale = static_cast<float>(channel.settings.scale);
       const auto offset = static_cast<float>(channel.settings.offset);
-      for (float& v : channel.chunk) v = (v + offset) * scale;
+      for (float& v : channel.chunk)
+        v = (v + offset) * scale;
       const auto limit = static_cast<float>(channel.settings.range_v);
       if (limit > 0.0F) {
-        for (float& v : channel.chunk) v = std::clamp(v, -limit, limit);
+        for (float& v : channel.chunk)
+          v = std::clamp(v, -limit, limit);
       }
     }
     used_ = 0;
@@ -147,10 +159,12 @@ class Simulator : public Source {
     const auto from = static_cast<float>(phase.gain);
     phase.gain = phase.servo->gain();
     const float by = (static_cast<float>(phase.gain) - from) / static_cast<float>(kChunk);
-    for (std::size_t i = 0; i < kChunk; ++i) phase.output[i] = (from + by * static_cast<float>(i)) * phase.input[i];
+    for (std::size_t i = 0; i < kChunk; ++i)
+      phase.output[i] = (from + by * static_cast<float>(i)) * phase.input[i];
   }
 
-  void note_over_range(measure::Block& block, std::size_t channel, std::size_t first, std::size_t count) const {
+  void note_over_range(measure::Block& block, std::size_t channel, std::size_t first,
+                       std::size_t count) const {
     const auto limit = static_cast<float>(channels_[channel].settings.range_v);
     if (!(limit > 0.0F)) return;
     const auto volts = block.channel(channel);
@@ -170,8 +184,10 @@ class Simulator : public Source {
 
 }  // namespace
 
-Result<std::unique_ptr<Source>> open_simulator(const config::SimulatorSettings& settings, const config::Site& site, UtcNs now) {
-  if (!(settings.rate_hz > 0.0)) return Error{"source.rate_hz", "the simulator has no sample rate", "give samples a second, such as 6400"};
+Result<std::unique_ptr<Source>> open_simulator(const config::SimulatorSettings& settings,
+                                               const config::Site& site, UtcNs now) {
+  if (!(settings.rate_hz > 0.0))
+    return Error{"source.rate_hz", "the simulator has no sample rate", "give samples a second, such as 6400"};
   return std::unique_ptr<Source>(std::make_unique<Simulator>(settings, site, now));
 }
 

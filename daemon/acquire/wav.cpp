@@ -19,7 +19,8 @@ using Encoding = WavFormat::Encoding;
 template <class T>
 T little_endian(const std::uint8_t* bytes) {
   T value = 0;
-  for (std::size_t i = 0; i < sizeof(T); ++i) value = static_cast<T>(value | static_cast<T>(static_cast<T>(bytes[i]) << (8 * i)));
+  for (std::size_t i = 0; i < sizeof(T); ++i)
+    value = static_cast<T>(value | static_cast<T>(static_cast<T>(bytes[i]) << (8 * i)));
   return value;
 }
 
@@ -33,7 +34,8 @@ Result<WavFormat> parse_format(const ByteReader& file, std::span<const std::uint
   const auto bits = little_endian<std::uint16_t>(chunk.data() + 14);
   constexpr std::uint16_t kExtensible = 0xfffe;
   if (tag == kExtensible) {
-    if (chunk.size() < 26) return bad_header(file, "the extensible format chunk is cut short", "the file is damaged");
+    if (chunk.size() < 26)
+      return bad_header(file, "the extensible format chunk is cut short", "the file is damaged");
     tag = little_endian<std::uint16_t>(chunk.data() + 24);
   }
   WavFormat format;
@@ -49,7 +51,8 @@ Result<WavFormat> parse_format(const ByteReader& file, std::span<const std::uint
   } else if (tag == 3 && bits == 32) {
     format.encoding = Encoding::float32;
   } else {
-    return bad_header(file, "samples of format " + std::to_string(tag) + " with " + std::to_string(bits) + " bits",
+    return bad_header(file,
+                      "samples of format " + std::to_string(tag) + " with " + std::to_string(bits) + " bits",
                       "PCM of 16, 24 or 32 bits and 32-bit float can be read");
   }
   if (format.channels == 0) return bad_header(file, "the file has no channels", "it needs at least one");
@@ -61,10 +64,12 @@ Result<WavFormat> parse_format(const ByteReader& file, std::span<const std::uint
 }
 
 /// One channel of `frames` interleaved frames to volts.
-using Decode = void (*)(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale, float add, float* out);
+using Decode = void (*)(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale,
+                        float add, float* out);
 
 template <std::size_t kFrameBytes>
-void decode_pcm16(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale, float add, float* out) {
+void decode_pcm16(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale,
+                  float add, float* out) {
   const std::size_t stride = kFrameBytes != 0 ? kFrameBytes : frame_bytes;
   for (std::size_t i = 0; i < count; ++i) {
     std::int16_t sample = 0;
@@ -73,21 +78,29 @@ void decode_pcm16(const std::uint8_t* frames, std::size_t count, std::size_t fra
   }
 }
 
-void decode_pcm24(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale, float add, float* out) {
+void decode_pcm24(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale,
+                  float add, float* out) {
   for (std::size_t i = 0; i < count; ++i) {
     const std::uint8_t* b = frames + i * frame_bytes;
-    const std::uint32_t high = static_cast<std::uint32_t>(b[0]) << 8U | static_cast<std::uint32_t>(b[1]) << 16U | static_cast<std::uint32_t>(b[2]) << 24U;
+    const std::uint32_t high = static_cast<std::uint32_t>(b[0]) << 8U |
+                               static_cast<std::uint32_t>(b[1]) << 16U |
+                               static_cast<std::uint32_t>(b[2]) << 24U;
     out[i] = static_cast<float>(std::bit_cast<std::int32_t>(high) / 256) * scale + add;
   }
 }
 
-void decode_pcm32(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale, float add, float* out) {
+void decode_pcm32(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale,
+                  float add, float* out) {
   for (std::size_t i = 0; i < count; ++i) {
-    out[i] = static_cast<float>(std::bit_cast<std::int32_t>(little_endian<std::uint32_t>(frames + i * frame_bytes))) * scale + add;
+    out[i] = static_cast<float>(
+                 std::bit_cast<std::int32_t>(little_endian<std::uint32_t>(frames + i * frame_bytes))) *
+                 scale +
+             add;
   }
 }
 
-void decode_float32(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale, float add, float* out) {
+void decode_float32(const std::uint8_t* frames, std::size_t count, std::size_t frame_bytes, float scale,
+                    float add, float* out) {
   for (std::size_t i = 0; i < count; ++i) {
     out[i] = std::bit_cast<float>(little_endian<std::uint32_t>(frames + i * frame_bytes)) * scale + add;
   }
@@ -96,20 +109,29 @@ void decode_float32(const std::uint8_t* frames, std::size_t count, std::size_t f
 Decode decoder_for(const WavFormat& format) {
   switch (format.encoding) {
     case Encoding::pcm16:
-      return format.frame_bytes == 2 ? decode_pcm16<2> : format.frame_bytes == 4 ? decode_pcm16<4> : decode_pcm16<0>;
-    case Encoding::pcm24: return decode_pcm24;
-    case Encoding::pcm32: return decode_pcm32;
-    case Encoding::float32: break;
+      return format.frame_bytes == 2   ? decode_pcm16<2>
+             : format.frame_bytes == 4 ? decode_pcm16<4>
+                                       : decode_pcm16<0>;
+    case Encoding::pcm24:
+      return decode_pcm24;
+    case Encoding::pcm32:
+      return decode_pcm32;
+    case Encoding::float32:
+      break;
   }
   return decode_float32;
 }
 
 double full_scale(Encoding encoding) {
   switch (encoding) {
-    case Encoding::pcm16: return 32768.0;
-    case Encoding::pcm24: return 8388608.0;
-    case Encoding::pcm32: return 2147483648.0;
-    case Encoding::float32: break;
+    case Encoding::pcm16:
+      return 32768.0;
+    case Encoding::pcm24:
+      return 8388608.0;
+    case Encoding::pcm32:
+      return 2147483648.0;
+    case Encoding::float32:
+      break;
   }
   return 1.0;
 }
@@ -123,7 +145,8 @@ class WavSource : public Source {
     const double scale = full_scale(format.encoding);
     for (std::size_t c = 0; c < channels.size(); ++c) {
       const double volts = std::abs(channels[c].scale);
-      const double top = format.encoding == Encoding::float32 ? std::numeric_limits<double>::infinity() : (scale - 1.0) / scale;
+      const double top = format.encoding == Encoding::float32 ? std::numeric_limits<double>::infinity()
+                                                              : (scale - 1.0) / scale;
       Wanted wanted;
       wanted.byte = columns[c] * sample_bytes;
       wanted.scale = static_cast<float>(channels[c].scale / scale);
@@ -150,8 +173,10 @@ class WavSource : public Source {
     info_.dated = settings.begin.has_value();
     info_.begin = settings.begin.value_or(UtcNs{});
     static constexpr const char* kNames[] = {"16 bit", "24 bit", "32 bit", "32-bit float"};
-    info_.what = "WAV file " + file_.path() + ", " + std::to_string(format.channels) + (format.channels == 1 ? " channel, " : " channels, ") +
-                 kNames[static_cast<std::size_t>(format.encoding)] + ", " + std::to_string(std::lround(format.rate_hz)) + " samples a second";
+    info_.what = "WAV file " + file_.path() + ", " + std::to_string(format.channels) +
+                 (format.channels == 1 ? " channel, " : " channels, ") +
+                 kNames[static_cast<std::size_t>(format.encoding)] + ", " +
+                 std::to_string(std::lround(format.rate_hz)) + " samples a second";
     if (left_) info_.frames = *left_ / static_cast<std::int64_t>(format.frame_bytes);
   }
 
@@ -182,7 +207,9 @@ class WavSource : public Source {
 
   [[nodiscard]] std::string end_remark() const override {
     std::string remark = "end of file";
-    if (truncated_) remark = "the file ends early: " + std::to_string(position_) + " of " + std::to_string(info_.frames.value_or(0)) + " frames are there";
+    if (truncated_)
+      remark = "the file ends early: " + std::to_string(position_) + " of " +
+               std::to_string(info_.frames.value_or(0)) + " frames are there";
     if (torn_ > 0) remark += ", the last frame is cut short";
     if (missing_ > 0) remark += "; " + std::to_string(missing_) + " frames held no number and were left out";
     return remark;
@@ -195,14 +222,15 @@ class WavSource : public Source {
     std::size_t byte = 0;  // within a frame
     float scale = 1.0F;
     float add = 0.0F;
-    float low_v = 0.0F;    // at or beyond these: over-range
+    float low_v = 0.0F;  // at or beyond these: over-range
     float high_v = 0.0F;
   };
 
   /// Reads the next frames as bytes; false at the end.
   Result<bool> fetch(std::size_t most_frames) {
     std::size_t bytes = most_frames * format_.frame_bytes;
-    if (left_) bytes = static_cast<std::size_t>(std::min<std::int64_t>(*left_, static_cast<std::int64_t>(bytes)));
+    if (left_)
+      bytes = static_cast<std::size_t>(std::min<std::int64_t>(*left_, static_cast<std::int64_t>(bytes)));
     if (bytes_.size() < bytes) bytes_.resize(bytes);
     const auto got = file_.read(std::span(bytes_).first(bytes));
     if (!got) return got.error();
@@ -226,7 +254,8 @@ class WavSource : public Source {
       block.resize(wanted_.size(), frames);
       block.begin({position_});
       for (std::size_t c = 0; c < wanted_.size(); ++c) {
-        decode_(from + wanted_[c].byte, frames, format_.frame_bytes, wanted_[c].scale, wanted_[c].add, block.channel(c).data());
+        decode_(from + wanted_[c].byte, frames, format_.frame_bytes, wanted_[c].scale, wanted_[c].add,
+                block.channel(c).data());
       }
       if (format_.encoding != Encoding::float32) break;
       const std::size_t sound = finite_frames(block);
@@ -235,7 +264,8 @@ class WavSource : public Source {
       if (frames == 0) return 0;
     }
     if (may_touch_limit(from, frames)) {
-      for (std::size_t c = 0; c < wanted_.size(); ++c) note_over_range(block, c);
+      for (std::size_t c = 0; c < wanted_.size(); ++c)
+        note_over_range(block, c);
     }
     return frames;
   }
@@ -250,7 +280,8 @@ class WavSource : public Source {
     return sound;
   }
 
-  /// false: surely no sample of these frames stands at a limit. Of 16-bit samples the extremes tell, and they vectorise.
+  /// false: surely no sample of these frames stands at a limit. Of 16-bit samples the extremes tell, and they
+  /// vectorise.
   [[nodiscard]] bool may_touch_limit(const std::uint8_t* from, std::size_t frames) const {
     if (format_.encoding != Encoding::pcm16) return true;
     std::int16_t low = 0;
@@ -270,7 +301,8 @@ class WavSource : public Source {
     for (std::size_t i = 0; i < volts.size(); ++i) {
       if (volts[i] > wanted.low_v && volts[i] < wanted.high_v) continue;
       auto& spans = block.over_range;
-      if (!spans.empty() && spans.back().channel == channel && spans.back().first_frame + spans.back().frames == i) {
+      if (!spans.empty() && spans.back().channel == channel &&
+          spans.back().first_frame + spans.back().frames == i) {
         ++spans.back().frames;
       } else {
         spans.push_back({channel, i, 1});
@@ -285,7 +317,7 @@ class WavSource : public Source {
   std::vector<Wanted> wanted_;
   std::optional<std::int64_t> left_;  // bytes of samples still in the file
   std::vector<std::uint8_t> bytes_;
-  std::size_t held_ = 0;              // frames in `bytes_` not yet given
+  std::size_t held_ = 0;  // frames in `bytes_` not yet given
   std::size_t used_ = 0;
   std::int64_t position_ = 0;
   std::int64_t missing_ = 0;
@@ -304,8 +336,10 @@ Result<WavFormat> read_wav_header(ByteReader& file) {
   if (!got) return got.error();
   if (got.value() == 0) return bad_header(file, "the file is empty", "name a recording");
   const auto is = [](const std::uint8_t* at, const char* name) { return std::memcmp(at, name, 4) == 0; };
-  if (got.value() < head.size() || (!is(head.data(), "RIFF") && !is(head.data(), "RF64")) || !is(head.data() + 8, "WAVE")) {
-    return bad_header(file, "this is no WAV file", "a WAV file begins with RIFF (or RF64), its size, and WAVE");
+  if (got.value() < head.size() || (!is(head.data(), "RIFF") && !is(head.data(), "RF64")) ||
+      !is(head.data() + 8, "WAVE")) {
+    return bad_header(file, "this is no WAV file",
+                      "a WAV file begins with RIFF (or RF64), its size, and WAVE");
   }
   std::optional<WavFormat> format;
   std::optional<std::int64_t> long_size;
@@ -314,7 +348,8 @@ Result<WavFormat> read_wav_header(ByteReader& file) {
     std::array<std::uint8_t, 8> chunk{};
     got = file.read(chunk);
     if (!got) return got.error();
-    if (got.value() < chunk.size()) return bad_header(file, "the file ends before its samples begin", "the header is cut short");
+    if (got.value() < chunk.size())
+      return bad_header(file, "the file ends before its samples begin", "the header is cut short");
     const auto size = little_endian<std::uint32_t>(chunk.data() + 4);
     if (is(chunk.data(), "data")) {
       if (!format) return bad_header(file, "the samples come before their format", "the file is damaged");
@@ -338,7 +373,8 @@ Result<WavFormat> read_wav_header(ByteReader& file) {
         format = parsed.value();
       } else if (part >= 16) {
         const auto bytes = little_endian<std::uint64_t>(body.data() + 8);
-        long_size = static_cast<std::int64_t>(std::min<std::uint64_t>(bytes, std::numeric_limits<std::int64_t>::max()));
+        long_size = static_cast<std::int64_t>(
+            std::min<std::uint64_t>(bytes, std::numeric_limits<std::int64_t>::max()));
       }
       if (auto done = file.skip(padded - static_cast<std::int64_t>(part)); !done) return done.error();
     } else if (auto done = file.skip(padded); !done) {
@@ -353,10 +389,11 @@ Result<std::unique_ptr<Source>> open_wav(const config::RecordingSettings& settin
   if (!file) return file.error();
   const auto format = read_wav_header(file.value());
   if (!format) return format.error();
-  const auto columns = columns_for(channels, std::vector<std::string>(format.value().channels), settings.path);
+  const auto columns =
+      columns_for(channels, std::vector<std::string>(format.value().channels), settings.path);
   if (!columns) return columns.error();
-  return std::unique_ptr<Source>(
-      std::make_unique<WavSource>(std::move(file).value(), format.value(), settings, channels, columns.value()));
+  return std::unique_ptr<Source>(std::make_unique<WavSource>(std::move(file).value(), format.value(),
+                                                             settings, channels, columns.value()));
 }
 
 }  // namespace tramline::acquire

@@ -20,12 +20,12 @@ struct WavFormat {
   std::optional<std::int64_t> data_bytes;  ///< nothing: to the end of the file
 };
 
-/// Reads a RIFF/WAVE or RF64 header and leaves the reader at the first sample. PCM of 16, 24 and 32 bits and 32-bit float,
-/// also by WAVE_FORMAT_EXTENSIBLE; chunks of other kinds are skipped.
+/// Reads a RIFF/WAVE or RF64 header and leaves the reader at the first sample. PCM of 16, 24 and 32 bits and
+/// 32-bit float, also by WAVE_FORMAT_EXTENSIBLE; chunks of other kinds are skipped.
 [[nodiscard]] Result<WavFormat> read_wav_header(ByteReader& file);
 
-/// A WAV file as a source. raw is the sample as a share of full scale, -1 to 1. A PCM sample at full scale is over-range. A WAV file
-/// has no time of its own.
+/// A WAV file as a source. raw is the sample as a share of full scale, -1 to 1. A PCM sample at full scale is
+/// over-range. A WAV file has no time of its own.
 [[nodiscard]] Result<std::unique_ptr<Source>> open_wav(const config::RecordingSettings& settings,
                                                        const std::vector<config::ChannelSettings>& channels);
 

@@ -14,7 +14,9 @@ constexpr int kBlocksAThreeSeconds = 15;
 // Blocks begin at the first half-cycle tick after the 10-minute tick, so a full interval may lack that much.
 constexpr std::int64_t kFullTenMinutesNs = kTenMinutesNs - 100 * kNsPerMillisecond;
 
-std::int64_t floor_div(std::int64_t a, std::int64_t b) { return a / b - (a % b < 0 ? 1 : 0); }
+std::int64_t floor_div(std::int64_t a, std::int64_t b) {
+  return a / b - (a % b < 0 ? 1 : 0);
+}
 
 }  // namespace
 
@@ -31,7 +33,8 @@ void Aggregator::reference_tick(const GridTick& tick, const SampleClock& clock,
   const std::int64_t now = floor_div(clock.utc_of(tick.at).value, kTenMinutesNs);
   const bool new_series = tick_ != now;
   if (new_series) {
-    for (Series& series : series_) series.ending = true;
+    for (Series& series : series_)
+      series.ending = true;
     tick_ = now;
   }
   for (Series& series : series_) {
@@ -68,22 +71,26 @@ void Aggregator::complete_block(const Series& series, const GridTick& tick, cons
   block->length_ns = clock.elapsed_ns(block->end) - clock.elapsed_ns(block->begin);
   for (std::size_t c = 0; c < channels_.size(); ++c) {
     ChannelOfBlock& channel = block->channels[c];
-    channel.mean_square = std::max(0.0, meters[c].history().energy(block->begin, block->end) / (block->end - block->begin));
+    channel.mean_square =
+        std::max(0.0, meters[c].history().energy(block->begin, block->end) / (block->end - block->begin));
     channel.over_range = meters[c].touches_over_range(block->begin, block->end);
   }
 }
 
-void Aggregator::take(const HalfCycle& half_cycle, const FlagTimeline& flags, std::vector<storage::Record>& out) {
+void Aggregator::take(const HalfCycle& half_cycle, const FlagTimeline& flags,
+                      std::vector<storage::Record>& out) {
   const SamplePosition at = half_cycle.value.begin;
   give_out_until(at, flags, out);
   for (Block& block : pending_) {
     if (at < block.begin) break;
     if (block.complete && at >= block.end) continue;
-    block.channels[half_cycle.channel_index].extremes.take(half_cycle.value.u_rms_v, half_cycle.value.u_rms_v);
+    block.channels[half_cycle.channel_index].extremes.take(half_cycle.value.u_rms_v,
+                                                           half_cycle.value.u_rms_v);
   }
 }
 
-void Aggregator::give_out_until(SamplePosition seen, const FlagTimeline& flags, std::vector<storage::Record>& out) {
+void Aggregator::give_out_until(SamplePosition seen, const FlagTimeline& flags,
+                                std::vector<storage::Record>& out) {
   while (!pending_.empty() && pending_.front().complete && pending_.front().end <= seen) {
     give_out(pending_.front(), flags, out);
     pending_.pop_front();
@@ -127,7 +134,8 @@ void Aggregator::give_out(const Block& block, const FlagTimeline& flags, std::ve
   add(block, of_block, ten_minutes_);
 }
 
-void Aggregator::add(const Block& block, const std::vector<ChannelOfSum>& of_block, std::optional<Sum>& sum) const {
+void Aggregator::add(const Block& block, const std::vector<ChannelOfSum>& of_block,
+                     std::optional<Sum>& sum) const {
   sum->channels.resize(channels_.size());
   ++sum->inputs;
   ++sum->blocks;
@@ -181,7 +189,8 @@ void Aggregator::end_two_hours(std::vector<storage::Record>& out) {
   two_hours_.reset();
 }
 
-void Aggregator::give_out(const Sum& sum, storage::Interval interval, std::vector<storage::Record>& out) const {
+void Aggregator::give_out(const Sum& sum, storage::Interval interval,
+                          std::vector<storage::Record>& out) const {
   for (std::size_t c = 0; c < channels_.size(); ++c) {
     const ChannelOfSum& of = sum.channels[c];
     storage::Aggregate record;
@@ -205,7 +214,8 @@ void Aggregator::give_out(const Sum& sum, storage::Interval interval, std::vecto
 void Aggregator::gap(const FlagTimeline& flags, std::vector<storage::Record>& out) {
   std::erase_if(pending_, [](const Block& block) { return !block.complete; });
   give_out_until(std::numeric_limits<double>::infinity(), flags, out);
-  for (Sum& sum : three_seconds_) end_three_seconds(sum, out);
+  for (Sum& sum : three_seconds_)
+    end_three_seconds(sum, out);
   three_seconds_.clear();
   series_.clear();
   tick_.reset();

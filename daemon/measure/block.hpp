@@ -14,10 +14,10 @@ namespace tramline::measure {
 /// Why samples are missing before a block.
 enum class GapCause : std::uint8_t {
   none,
-  samples_lost,     ///< the source said that it lost samples
-  not_a_number,     ///< the recording holds no number there
-  time_jump,        ///< the recording's own time jumps
-  rate_change,      ///< the sample rate changes by more than a few percent
+  samples_lost,  ///< the source said that it lost samples
+  not_a_number,  ///< the recording holds no number there
+  time_jump,     ///< the recording's own time jumps
+  rate_change,   ///< the sample rate changes by more than a few percent
 };
 
 /// "Sample `at` was taken at `utc`, and from it on samples come at `rate_hz`."
@@ -37,8 +37,8 @@ struct OverRangeSpan {
 /// A stretch of simultaneous samples in volts, planar: each channel's samples stand side by side.
 ///
 /// Who fills it owns it and reuses it; `resize()` allocates only when it grows. Channels are in the site's
-/// order. Samples are finite: a source turns anything else into a gap. A gap shows as a `first` beyond the end
-/// of the block before; then `gap` names the cause.
+/// order. Samples are finite: a source turns anything else into a gap. A gap shows as a `first` beyond the
+/// end of the block before; then `gap` names the cause.
 struct Block {
   SampleIndex first;
   GapCause gap = GapCause::none;

@@ -9,13 +9,15 @@ namespace {
 
 constexpr double kLeastFundamental = 0.02;  // of nominal: below, noise would set the crossings
 constexpr double kEarliest = 0.30;          // of a cycle after the last tick
-constexpr double kLatest = 0.85;            // more than half a cycle later, so a crossing always falls between
-constexpr double kPeriodRange = 0.16;       // 15 % and a little, for the ends of the range themselves
-constexpr double kSteadyAmplitude = 0.01;   // largest relative change in a cycle called undisturbed
+constexpr double kLatest = 0.85;           // more than half a cycle later, so a crossing always falls between
+constexpr double kPeriodRange = 0.16;      // 15 % and a little, for the ends of the range themselves
+constexpr double kSteadyAmplitude = 0.01;  // largest relative change in a cycle called undisturbed
 constexpr double kSteadyPeriod = 0.002;
 constexpr double kJump = 0.01;
-constexpr int kFlywheelTicks = 8;       // the band-pass spreads a step over four, and it takes three more to be sure
-constexpr double kFlywheelReach = 0.15; // of a cycle: what a step in amplitude alone can do to a crossing, and more
+constexpr int kFlywheelTicks =
+    8;  // the band-pass spreads a step over four, and it takes three more to be sure
+constexpr double kFlywheelReach =
+    0.15;  // of a cycle: what a step in amplitude alone can do to a crossing, and more
 constexpr double kLongestStart = 4.0;  // cycles to wait for a good period before running free
 
 }  // namespace
@@ -36,14 +38,16 @@ void CycleGrid::restart(SamplePosition origin) {
   gone_ = seen_ = false;
 }
 
-void CycleGrid::follow(std::span<const Crossing> crossings, SamplePosition progress, std::vector<GridTick>& out) {
+void CycleGrid::follow(std::span<const Crossing> crossings, SamplePosition progress,
+                       std::vector<GridTick>& out) {
   for (const Crossing& crossing : crossings) {
     if (crossing.amplitude_v < least_amplitude_v_) continue;
     free_run_until(crossing.at, out);
     if (gone_) flywheel_ticks_ = 0;  // the waveform is back: it gets as long to settle as it had to fade
     gone_ = false;
     seen_ = true;
-    const bool early = past_count_ > 0 && crossing.at < last_ + (on_flywheel() ? 0.5 - kFlywheelReach : kEarliest) * period_;
+    const bool early =
+        past_count_ > 0 && crossing.at < last_ + (on_flywheel() ? 0.5 - kFlywheelReach : kEarliest) * period_;
     if (!early) take(crossing, out);
   }
   free_run_until(progress, out);
@@ -54,7 +58,8 @@ void CycleGrid::finish(SamplePosition end, std::vector<GridTick>& out) {
   const bool to_the_last = past_count_ > 0 && past_[0].measured;
   const std::size_t before = out.size();
   free_run_until(end + (kLatest - 0.5) * period_, out);
-  for (std::size_t i = before; i < out.size(); ++i) out[i].extended = to_the_last;
+  for (std::size_t i = before; i < out.size(); ++i)
+    out[i].extended = to_the_last;
 }
 
 GridTick CycleGrid::free_running_tick() const {
@@ -63,7 +68,9 @@ GridTick CycleGrid::free_running_tick() const {
   return tick;
 }
 
-bool CycleGrid::on_flywheel() const { return !starting_ && good_count_ > 0 && flywheel_ticks_ < kFlywheelTicks; }
+bool CycleGrid::on_flywheel() const {
+  return !starting_ && good_count_ > 0 && flywheel_ticks_ < kFlywheelTicks;
+}
 
 void CycleGrid::end_start(std::vector<GridTick>& out) {
   starting_ = false;
@@ -123,8 +130,8 @@ void CycleGrid::take(const Crossing& crossing, std::vector<GridTick>& out) {
       tick.jump = change > kJump * now.cycle;
     }
   }
-  // The crossing of 16 cycles ago, if all since were measured: a restless supply has no undisturbed cycle, but
-  // over that many its period shows all the same.
+  // The crossing of 16 cycles ago, if all since were measured: a restless supply has no undisturbed cycle,
+  // but over that many its period shows all the same.
   const bool long_run = unbroken_ >= recent_.size();
   const SamplePosition long_ago = recent_[next_recent_];
   recent_[next_recent_] = crossing.at;
@@ -167,7 +174,8 @@ void CycleGrid::remember(double period) {
   ++good_count_;
   const std::size_t n = std::min(good_count_, good_.size());
   double sum = 0.0;
-  for (std::size_t i = 0; i < n; ++i) sum += good_[i];
+  for (std::size_t i = 0; i < n; ++i)
+    sum += good_[i];
   period_ = sum / static_cast<double>(n);
 }
 

@@ -23,16 +23,16 @@ struct GridTick {
 
 /// Turns zero crossings into an unbroken grid of half cycles.
 ///
-/// A crossing is taken if the fundamental is at least 2 % of nominal there and if it lies 0.3 to 0.85 of a cycle
-/// after the tick before. A sudden change of amplitude shifts the crossings of the band-passed copy, though not those of the
-/// voltage, and as a waveform fades or returns the filter's own ringing has crossings too. So while the waveform is
-/// disturbed, for at most four cycles, the grid keeps the last good period: a crossing near to where it is expected counts as
-/// being there, others are passed over. Where no crossing comes, because the waveform is gone, the grid runs on with the last
-/// good period (the mean of the last four undisturbed cycles or, on a supply so restless that there are none, of the last
-/// sixteen), so that an interruption of any length has half-cycle values.
-/// At the begin of a stretch the first ticks wait, for up to four cycles, until the period is known; then the grid is
-/// drawn backwards to the begin, so that no cycle of a short recording is left out.
-/// One thread; allocates nothing.
+/// A crossing is taken if the fundamental is at least 2 % of nominal there and if it lies 0.3 to 0.85 of a
+/// cycle after the tick before. A sudden change of amplitude shifts the crossings of the band-passed copy,
+/// though not those of the voltage, and as a waveform fades or returns the filter's own ringing has crossings
+/// too. So while the waveform is disturbed, for at most four cycles, the grid keeps the last good period: a
+/// crossing near to where it is expected counts as being there, others are passed over. Where no crossing
+/// comes, because the waveform is gone, the grid runs on with the last good period (the mean of the last four
+/// undisturbed cycles or, on a supply so restless that there are none, of the last sixteen), so that an
+/// interruption of any length has half-cycle values. At the begin of a stretch the first ticks wait, for up
+/// to four cycles, until the period is known; then the grid is drawn backwards to the begin, so that no cycle
+/// of a short recording is left out. One thread; allocates nothing.
 class CycleGrid {
  public:
   /// `nominal_period` in samples; `nominal_v` r.m.s. Periods are believed within 15 % of nominal
@@ -69,19 +69,19 @@ class CycleGrid {
   struct Past {
     SamplePosition crossing;
     bool measured;
-    bool moved;    // the tick stands where it was expected, not at the crossing
+    bool moved;  // the tick stands where it was expected, not at the crossing
     double amplitude_v;
     double cycle;  // distance to the crossing two before, 0 if not known
   };
   std::array<Past, 2> past_{};  // the last tick and the one before
   std::size_t past_count_ = 0;
-  int flywheel_ticks_ = 0;      // moved or free-running since the last undisturbed cycle
+  int flywheel_ticks_ = 0;                   // moved or free-running since the last undisturbed cycle
   std::array<SamplePosition, 32> recent_{};  // the last crossings taken, 16 cycles
   std::size_t next_recent_ = 0;
-  std::size_t unbroken_ = 0;    // crossings taken since the grid last ran free
-  std::size_t restless_ = 0;    // ticks since the last undisturbed cycle
-  bool seen_ = false;           // a crossing since the last tick, taken or not
-  bool gone_ = false;           // no crossing between the last two ticks
+  std::size_t unbroken_ = 0;  // crossings taken since the grid last ran free
+  std::size_t restless_ = 0;  // ticks since the last undisturbed cycle
+  bool seen_ = false;         // a crossing since the last tick, taken or not
+  bool gone_ = false;         // no crossing between the last two ticks
   SamplePosition origin_ = 0.0;
   SamplePosition last_ = 0.0;  // the last tick, or the origin before there is one
   bool last_rising_ = false;

@@ -9,9 +9,13 @@ namespace {
 using storage::EventEnd;
 using storage::EventKind;
 
-std::size_t index_of(Phase phase) { return static_cast<std::size_t>(phase); }
+std::size_t index_of(Phase phase) {
+  return static_cast<std::size_t>(phase);
+}
 
-std::uint8_t bit_of(Phase phase) { return static_cast<std::uint8_t>(1U << index_of(phase)); }
+std::uint8_t bit_of(Phase phase) {
+  return static_cast<std::uint8_t>(1U << index_of(phase));
+}
 
 }  // namespace
 
@@ -105,7 +109,8 @@ void EventDetector::begin(Watch& watch, const HalfCycle& by, std::size_t index, 
 void EventDetector::follow(Watch& watch, const HalfCycle& value) const {
   storage::Event& event = watch.event;
   const double volts = value.value.u_rms_v;
-  if (past_threshold(watch, volts)) event.phases = static_cast<std::uint8_t>(event.phases | bit_of(value.channel.phase));
+  if (past_threshold(watch, volts))
+    event.phases = static_cast<std::uint8_t>(event.phases | bit_of(value.channel.phase));
   const bool further = std::isnan(event.extreme_v) ||
                        (watch.kind == EventKind::swell ? volts > event.extreme_v : volts < event.extreme_v);
   if (further) {

@@ -13,9 +13,10 @@
 
 namespace tramline::measure {
 
-/// An event at the moment it begins or ends, with the place in the stream of half-cycle values where that shows.
+/// An event at the moment it begins or ends, with the place in the stream of half-cycle values where that
+/// shows.
 struct EventMark {
-  std::size_t after = 0;       ///< index, in the same output, of the half-cycle value that began or ended it
+  std::size_t after = 0;  ///< index, in the same output, of the half-cycle value that began or ended it
   bool ended = false;
   SamplePosition begin = 0.0;  ///< begin of the event
   SamplePosition end = 0.0;    ///< end of the event; its begin while it goes on
@@ -25,15 +26,16 @@ struct EventMark {
 /// Sags, swells and interruptions of one side, one or three phases (IEC 61000-4-30:2015, 5.4 and 5.5).
 ///
 /// Polyphase: a sag or swell begins with the first phase past the threshold and ends when all phases are back
-/// past threshold and hysteresis; an interruption begins when all phases are below and ends with the first one
-/// back. An interruption is also a sag; both are recorded. One side, one thread; allocates nothing.
+/// past threshold and hysteresis; an interruption begins when all phases are below and ends with the first
+/// one back. An interruption is also a sag; both are recorded. One side, one thread; allocates nothing.
 class EventDetector {
  public:
   /// `phases` of `side` are measured. Thresholds are shares of `nominal_v` (U_din).
-  EventDetector(Side side, const std::vector<Phase>& phases, double nominal_v, const config::EventSettings& settings);
+  EventDetector(Side side, const std::vector<Phase>& phases, double nominal_v,
+                const config::EventSettings& settings);
 
-  /// Takes the half-cycle values of this side in the order of their begins; `index` is the value's place in the output. Appends
-  /// a mark for each event that begins or ends with it.
+  /// Takes the half-cycle values of this side in the order of their begins; `index` is the value's place in
+  /// the output. Appends a mark for each event that begins or ends with it.
   void take(const HalfCycle& half_cycle, std::size_t index, std::vector<EventMark>& out);
 
   /// Measuring stops after the last value taken: closes what is open, with this reason.
@@ -46,7 +48,7 @@ class EventDetector {
   struct Watch {
     storage::EventKind kind = storage::EventKind::sag;
     double threshold_v = 0.0;
-    double end_v = 0.0;              // back at or past this: recovered
+    double end_v = 0.0;  // back at or past this: recovered
     bool open = false;
     SamplePosition begin = 0.0;
     std::int64_t begin_elapsed_ns = 0;

@@ -31,7 +31,8 @@ class FlagTimeline {
   }
   /// Nothing before `at` will be asked for any more.
   void forget_before(SamplePosition at) {
-    for (auto& side : stretches_) std::erase_if(side, [at](const Stretch& s) { return s.end <= at; });
+    for (auto& side : stretches_)
+      std::erase_if(side, [at](const Stretch& s) { return s.end <= at; });
   }
 
  private:

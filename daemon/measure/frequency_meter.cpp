@@ -44,7 +44,8 @@ void FrequencyMeter::reference_tick(const GridTick& tick, const SampleClock& clo
   last_number_ = number;
 }
 
-void FrequencyMeter::give_out_until(SamplePosition seen, const FlagTimeline& flags, std::vector<storage::Record>& out) {
+void FrequencyMeter::give_out_until(SamplePosition seen, const FlagTimeline& flags,
+                                    std::vector<storage::Record>& out) {
   while (!pending_.empty() && pending_.front().last < seen) {
     give_out(pending_.front(), flags, out);
     pending_.pop_front();
@@ -58,7 +59,8 @@ void FrequencyMeter::finish(const FlagTimeline& flags, std::vector<storage::Reco
   give_out_until(std::numeric_limits<double>::infinity(), flags, out);
 }
 
-void FrequencyMeter::give_out(const Count& count, const FlagTimeline& flags, std::vector<storage::Record>& out) const {
+void FrequencyMeter::give_out(const Count& count, const FlagTimeline& flags,
+                              std::vector<storage::Record>& out) const {
   storage::Frequency record;
   record.begin = count.from_tick ? UtcNs{count.number * kTenSecondsNs} : count.first_utc;
   record.end = count.to_tick ? UtcNs{(count.number + 1) * kTenSecondsNs} : count.last_utc;

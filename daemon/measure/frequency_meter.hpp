@@ -16,8 +16,8 @@ namespace tramline::measure {
 /// Power frequency: the whole cycles counted in each 10 s of the absolute clock, divided by their time
 /// (IEC 61000-4-30:2015, 5.1), on the reference channel.
 ///
-/// Where fewer than 10 s were measured, at the begin, at the end and beside a gap, the value spans what there is and
-/// says so by its begin and end. One thread; allocates little per 10 s, nothing per sample.
+/// Where fewer than 10 s were measured, at the begin, at the end and beside a gap, the value spans what there
+/// is and says so by its begin and end. One thread; allocates little per 10 s, nothing per sample.
 class FrequencyMeter {
  public:
   explicit FrequencyMeter(Side side) : side_(side) {}
@@ -48,7 +48,7 @@ class FrequencyMeter {
     std::int64_t last_elapsed_ns = 0;
     std::int32_t cycles = 0;
     bool trusted = true;
-    bool from_tick = false;   // the count begins with the 10 s
+    bool from_tick = false;  // the count begins with the 10 s
     bool to_tick = false;
   };
   void give_out(const Count& count, const FlagTimeline& flags, std::vector<storage::Record>& out) const;

@@ -10,8 +10,8 @@
 namespace tramline::measure {
 namespace {
 
-/// Where the cubic through y[-1], y[0], y[1], y[2] is zero in [0, 1], given that y[0] and y[1] differ in sign; and
-/// its slope there.
+/// Where the cubic through y[-1], y[0], y[1], y[2] is zero in [0, 1], given that y[0] and y[1] differ in
+/// sign; and its slope there.
 struct Root {
   double at;
   double slope;
@@ -24,7 +24,8 @@ Root root_of_cubic(const float* y) {
   const double c1 = y1 - ym / 3.0 - y0 / 2.0 - y2 / 6.0;
   const double c2 = (ym + y1) / 2.0 - y0;
   const double c3 = (y2 - ym) / 6.0 + (y0 - y1) / 2.0;
-  // One Newton step from the chord: a sine is nearly straight at its zero crossing, so what remains is below 1e-5.
+  // One Newton step from the chord: a sine is nearly straight at its zero crossing, so what remains is below
+  // 1e-5.
   const double chord = y0 / (y0 - y1);
   const double value = y0 + chord * (c1 + chord * (c2 + chord * c3));
   const double slope = c1 + chord * (2.0 * c2 + chord * 3.0 * c3);
@@ -35,7 +36,8 @@ Root root_of_cubic(const float* y) {
 /// One output of the symmetric filter with `half` taps on each side.
 float filter_one(const float* centre, const float* taps, std::ptrdiff_t half) {
   float sum = taps[0] * centre[0];
-  for (std::ptrdiff_t k = 1; k <= half; ++k) sum += taps[k] * (centre[-k] + centre[k]);
+  for (std::ptrdiff_t k = 1; k <= half; ++k)
+    sum += taps[k] * (centre[-k] + centre[k]);
   return sum;
 }
 
@@ -104,8 +106,10 @@ void FundamentalCrossings::follow(const SampleHistory& history, std::vector<Cros
   float* y = filtered_.extend(static_cast<std::size_t>(count));
   const float* centre = decimated.at(first);
   std::int64_t i = 0;
-  for (; i + 8 <= count; i += 8) filter_eight(centre + i, taps_.data(), half, y + i);
-  for (; i < count; ++i) y[i] = filter_one(centre + i, taps_.data(), half);
+  for (; i + 8 <= count; i += 8)
+    filter_eight(centre + i, taps_.data(), half, y + i);
+  for (; i < count; ++i)
+    y[i] = filter_one(centre + i, taps_.data(), half);
 
   // A crossing lies between rows j and j + 1; the cubic needs j - 1 … j + 2.
   const std::int64_t end = filtered_.end() - 2;

@@ -4,8 +4,9 @@
 
 namespace tramline::measure {
 
-/// Four floats computed side by side: one SSE or NEON register where there is one, four scalars elsewhere. Written
-/// out, since compilers may not reorder sums of floats on their own, and so that the order is the same everywhere.
+/// Four floats computed side by side: one SSE or NEON register where there is one, four scalars elsewhere.
+/// Written out, since compilers may not reorder sums of floats on their own, and so that the order is the
+/// same everywhere.
 using Lanes [[gnu::vector_size(16)]] = float;
 
 inline Lanes load(const float* from) {
@@ -14,10 +15,16 @@ inline Lanes load(const float* from) {
   return lanes;
 }
 
-inline void store(Lanes lanes, float* to) { std::memcpy(to, &lanes, sizeof lanes); }
+inline void store(Lanes lanes, float* to) {
+  std::memcpy(to, &lanes, sizeof lanes);
+}
 
-inline Lanes all(float value) { return Lanes{value, value, value, value}; }
+inline Lanes all(float value) {
+  return Lanes{value, value, value, value};
+}
 
-inline float sum_of(Lanes lanes) { return (lanes[0] + lanes[2]) + (lanes[1] + lanes[3]); }
+inline float sum_of(Lanes lanes) {
+  return (lanes[0] + lanes[2]) + (lanes[1] + lanes[3]);
+}
 
 }  // namespace tramline::measure

@@ -14,7 +14,8 @@ constexpr std::int64_t kTolerableStep_ns = 5 * kNsPerMillisecond;
 
 std::vector<Channel> channels_of(const config::Site& site) {
   std::vector<Channel> channels;
-  for (const auto& settings : site.channels) channels.push_back(settings.channel);
+  for (const auto& settings : site.channels)
+    channels.push_back(settings.channel);
   return channels;
 }
 
@@ -28,11 +29,15 @@ std::vector<Phase> phases_of(const std::vector<Channel>& channels, Side side) {
 
 const char* text_of(GapCause cause) {
   switch (cause) {
-    case GapCause::not_a_number: return "no number in the recording";
-    case GapCause::time_jump: return "the recording's time jumps";
-    case GapCause::rate_change: return "the sample rate changes";
+    case GapCause::not_a_number:
+      return "no number in the recording";
+    case GapCause::time_jump:
+      return "the recording's time jumps";
+    case GapCause::rate_change:
+      return "the sample rate changes";
     case GapCause::none:
-    case GapCause::samples_lost: break;
+    case GapCause::samples_lost:
+      break;
   }
   return "samples lost";
 }
@@ -53,7 +58,8 @@ Meter::Meter(const config::Site& site, const StreamShape& stream)
   // Far enough back for a whole 10/12-cycle block and for a capture, at the lowest frequency.
   const double cycle = stream.rate_hz / site.nominal_hz / 0.8;
   const auto keep = std::max<std::size_t>(static_cast<std::size_t>(18.0 * cycle),
-                                          capture_.samples_before() + static_cast<std::size_t>(6.0 * cycle)) + kChunk;
+                                          capture_.samples_before() + static_cast<std::size_t>(6.0 * cycle)) +
+                    kChunk;
   meters_.reserve(channels_.size());
   for (std::size_t c = 0; c < channels_.size(); ++c) {
     meters_.emplace_back(stream.rate_hz, site.nominal_hz, site.nominal_v, keep, kChunk);
@@ -83,7 +89,8 @@ void Meter::take(const Block& block, MeterOutput& out) {
   if (block.anchor) {
     const std::int64_t step = clock_.anchor(*block.anchor);
     if (in_stretch_ && std::abs(step) > kTolerableStep_ns) {
-      out.records.emplace_back(storage::ClockChange{block.anchor->utc, "the clock was set", step, clock_state_});
+      out.records.emplace_back(
+          storage::ClockChange{block.anchor->utc, "the clock was set", step, clock_state_});
     }
   }
   if (!in_stretch_) begin_stretch(block.first, why_begun_, out);
@@ -101,7 +108,8 @@ void Meter::begin_stretch(SampleIndex at, const std::string& why, MeterOutput& o
   stretch_begin_ns_ = clock_.elapsed_ns(static_cast<double>(at.value));
   next_sample_ = at;
   next_progress_ = static_cast<double>(at.value) + kProgressEvery_s * rate_hz_;
-  for (HalfCycleRms& meter : meters_) meter.restart(at);
+  for (HalfCycleRms& meter : meters_)
+    meter.restart(at);
   const auto begin = static_cast<double>(at.value);
   out.records.emplace_back(storage::CoverageBegin{at, clock_.utc_of(begin), why});
 }
@@ -149,15 +157,20 @@ void Meter::give_out_half_cycles(bool all, MeterOutput& out) {
 
 void Meter::give_out(std::size_t channel_index, MeterOutput& out) {
   const HalfCycleValue& value = queues_[channel_index].front();
-  HalfCycle half_cycle{channel_index, channels_[channel_index], value, clock_.utc_of(value.begin),
-                       clock_.elapsed_ns(value.begin), 0};
+  HalfCycle half_cycle{channel_index,
+                       channels_[channel_index],
+                       value,
+                       clock_.utc_of(value.begin),
+                       clock_.elapsed_ns(value.begin),
+                       0};
   half_cycle.window_ns = clock_.elapsed_ns(value.end) - half_cycle.elapsed_ns;
   out.half_cycles.push_back(half_cycle);
 
   const SamplePosition seen = value.begin;
   capture_.give_out_until(seen, meters_, clock_, out.records);
   const std::size_t events_before = out.events.size();
-  detectors_[static_cast<std::size_t>(half_cycle.channel.side)]->take(half_cycle, out.half_cycles.size() - 1, out.events);
+  detectors_[static_cast<std::size_t>(half_cycle.channel.side)]->take(half_cycle, out.half_cycles.size() - 1,
+                                                                      out.events);
   note_events(events_before, out);
   aggregator_.take(half_cycle, flags_, out.records);
   frequency_.give_out_until(seen, flags_, out.records);

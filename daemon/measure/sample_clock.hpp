@@ -12,9 +12,9 @@ namespace tramline::measure {
 
 /// Maps sample positions to UTC and to sample time, from the anchors that the source reports.
 ///
-/// UTC may step at an anchor (the wall clock was set); sample time never does: it is the count of samples over
-/// their rate, and every duration is a difference of it. Remembers the last 16 anchors, which spans
-/// the measurement's delay with room to spare. One thread; allocates nothing.
+/// UTC may step at an anchor (the wall clock was set); sample time never does: it is the count of samples
+/// over their rate, and every duration is a difference of it. Remembers the last 16 anchors, which spans the
+/// measurement's delay with room to spare. One thread; allocates nothing.
 class SampleClock {
  public:
   /// Sample 0 was taken at `begin`; samples come at `rate_hz` until an anchor says otherwise.

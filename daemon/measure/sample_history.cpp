@@ -18,11 +18,13 @@ constexpr double kFewestRowsACycle = 16.0;
 template <std::size_t kRow>
 constexpr std::array<float, kRow> rising_weights() {
   std::array<float, kRow> weights{};
-  for (std::size_t i = 0; i < kRow; ++i) weights[i] = (static_cast<float>(i) + 0.5F) / static_cast<float>(kRow);
+  for (std::size_t i = 0; i < kRow; ++i)
+    weights[i] = (static_cast<float>(i) + 0.5F) / static_cast<float>(kRow);
   return weights;
 }
 
-/// Energies of the rows, and the decimated copy at the border before each; `rising` is carried from row to row.
+/// Energies of the rows, and the decimated copy at the border before each; `rising` is carried from row to
+/// row.
 template <std::size_t kRow>
 void sum_rows(const float* volts, std::size_t rows, float* decimated, float* energies, float& rising) {
   static constexpr auto kWeights = rising_weights<kRow>();
@@ -56,15 +58,23 @@ void sum_rows(const float* volts, std::size_t rows, float* decimated, float* ene
   }
 }
 
-void sum_rows(std::size_t row, const float* volts, std::size_t rows, float* decimated, float* energies, float& rising) {
+void sum_rows(std::size_t row, const float* volts, std::size_t rows, float* decimated, float* energies,
+              float& rising) {
   switch (row) {
-    case 1: return sum_rows<1>(volts, rows, decimated, energies, rising);
-    case 2: return sum_rows<2>(volts, rows, decimated, energies, rising);
-    case 4: return sum_rows<4>(volts, rows, decimated, energies, rising);
-    case 8: return sum_rows<8>(volts, rows, decimated, energies, rising);
-    case 16: return sum_rows<16>(volts, rows, decimated, energies, rising);
-    case 32: return sum_rows<32>(volts, rows, decimated, energies, rising);
-    default: return sum_rows<kMostSamplesARow>(volts, rows, decimated, energies, rising);
+    case 1:
+      return sum_rows<1>(volts, rows, decimated, energies, rising);
+    case 2:
+      return sum_rows<2>(volts, rows, decimated, energies, rising);
+    case 4:
+      return sum_rows<4>(volts, rows, decimated, energies, rising);
+    case 8:
+      return sum_rows<8>(volts, rows, decimated, energies, rising);
+    case 16:
+      return sum_rows<16>(volts, rows, decimated, energies, rising);
+    case 32:
+      return sum_rows<32>(volts, rows, decimated, energies, rising);
+    default:
+      return sum_rows<kMostSamplesARow>(volts, rows, decimated, energies, rising);
   }
 }
 
@@ -72,7 +82,8 @@ void sum_rows(std::size_t row, const float* volts, std::size_t rows, float* deci
 
 std::size_t samples_per_row(double rate_hz, double nominal_hz) {
   std::size_t row = 1;
-  while (row < kMostSamplesARow && rate_hz / (nominal_hz * static_cast<double>(2 * row)) >= kFewestRowsACycle) {
+  while (row < kMostSamplesARow &&
+         rate_hz / (nominal_hz * static_cast<double>(2 * row)) >= kFewestRowsACycle) {
     row *= 2;
   }
   return row;
@@ -125,14 +136,16 @@ std::array<double, 4> SampleHistory::squares_around(std::int64_t n) const {
   std::array<double, 4> squares{};
   if (n - 1 >= samples_.begin() && n + 2 < samples_.end()) {
     const float* volts = samples_.at(n - 1);
-    for (std::size_t i = 0; i < 4; ++i) squares[i] = static_cast<double>(volts[i]);
+    for (std::size_t i = 0; i < 4; ++i)
+      squares[i] = static_cast<double>(volts[i]);
   } else {  // at the ends of the stretch the last sample stands for those beyond
     for (std::int64_t i = 0; i < 4; ++i) {
       const std::int64_t at = std::clamp(n - 1 + i, samples_.begin(), samples_.end() - 1);
       squares[static_cast<std::size_t>(i)] = static_cast<double>(*samples_.at(at));
     }
   }
-  for (double& square : squares) square *= square;
+  for (double& square : squares)
+    square *= square;
   return squares;
 }
 
@@ -149,8 +162,8 @@ double SampleHistory::head(SamplePosition at) const {
   }
   const double sum = sums[0] + sums[1];
 
-  // Cubic (Catmull-Rom) through the squares around the end; its integral over a whole step is the trapezoid with the
-  // first Euler-Maclaurin correction, so the whole steps need only the terms at the ends.
+  // Cubic (Catmull-Rom) through the squares around the end; its integral over a whole step is the trapezoid
+  // with the first Euler-Maclaurin correction, so the whole steps need only the terms at the ends.
   const auto [f0, f1, f2, f3] = squares_around(n);
   const double slope1 = (f2 - f0) / 2.0;
   const double slope2 = (f3 - f1) / 2.0;

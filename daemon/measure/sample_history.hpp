@@ -19,10 +19,9 @@ using SamplePosition = double;
 
 /// The recent samples of one channel, with the sum of squares of each row of them and a decimated copy.
 ///
-/// This is where the work per sample is done: one vectorised pass. Everything above works on rows and on the few
-/// samples at a window's ends. Rows are counted from where the stretch began, so the result does not depend
-/// on how the samples were cut into blocks.
-/// One thread. Allocates only when constructed.
+/// This is where the work per sample is done: one vectorised pass. Everything above works on rows and on the
+/// few samples at a window's ends. Rows are counted from where the stretch began, so the result does not
+/// depend on how the samples were cut into blocks. One thread. Allocates only when constructed.
 class SampleHistory {
  public:
   /// Keeps at least the last `keep` samples; takes at most `most_at_once` in one `append()`.
@@ -36,15 +35,15 @@ class SampleHistory {
 
   /// Integral of the squared voltage over [from, to), in V² times samples.
   ///
-  /// The ends may fall between samples: the square is interpolated there by a cubic, and the sum is corrected as by
-  /// Euler-Maclaurin, so the value for an exact period of a sampled sine does not depend on where it begins.
-  /// Both ends must lie within the samples held.
+  /// The ends may fall between samples: the square is interpolated there by a cubic, and the sum is corrected
+  /// as by Euler-Maclaurin, so the value for an exact period of a sampled sine does not depend on where it
+  /// begins. Both ends must lie within the samples held.
   [[nodiscard]] double energy(SamplePosition from, SamplePosition to) const {
     return rows_energy(row_of(from), row_of(to)) + head(to) - head(from);
   }
 
-  /// The pieces of `energy()`, for callers that use one end twice: the part of the integral between the begin of the
-  /// row in which `at` lies and `at` itself, …
+  /// The pieces of `energy()`, for callers that use one end twice: the part of the integral between the begin
+  /// of the row in which `at` lies and `at` itself, …
   [[nodiscard]] double head(SamplePosition at) const;
   /// … the sum of squares of the whole rows [from, to), …
   [[nodiscard]] double rows_energy(std::int64_t from, std::int64_t to) const;
@@ -52,9 +51,9 @@ class SampleHistory {
   [[nodiscard]] std::int64_t row_of(SamplePosition at) const;
 
   [[nodiscard]] const SlidingBuffer<float>& samples() const { return samples_; }
-  /// A decimated copy of the signal, low-passed by a triangle two rows long so that no harmonic folds onto the
-  /// fundamental: element r is centred on the border between the rows r - 1 and r, that is half a sample before row r.
-  /// In volts times samples a row.
+  /// A decimated copy of the signal, low-passed by a triangle two rows long so that no harmonic folds onto
+  /// the fundamental: element r is centred on the border between the rows r - 1 and r, that is half a sample
+  /// before row r. In volts times samples a row.
   [[nodiscard]] const SlidingBuffer<float>& decimated() const { return decimated_; }
   [[nodiscard]] std::size_t samples_a_row() const { return row_; }
   /// The first sample of this stretch.

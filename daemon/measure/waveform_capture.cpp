@@ -11,23 +11,28 @@ namespace {
 constexpr double kFullStep = 32767.0;
 constexpr std::int64_t kDayNs = 86400 * kNsPerSecond;
 
-std::int64_t samples(double milliseconds, double rate_hz) { return std::llround(milliseconds / 1000.0 * rate_hz); }
+std::int64_t samples(double milliseconds, double rate_hz) {
+  return std::llround(milliseconds / 1000.0 * rate_hz);
+}
 
 storage::Waveform::Trace quantise(Channel channel, const float* volts, std::size_t count) {
   float peak = 0.0F;
-  for (std::size_t i = 0; i < count; ++i) peak = std::max(peak, std::abs(volts[i]));
+  for (std::size_t i = 0; i < count; ++i)
+    peak = std::max(peak, std::abs(volts[i]));
   storage::Waveform::Trace trace;
   trace.channel = channel;
   trace.volts_per_step = peak / static_cast<float>(kFullStep);
   trace.steps.resize(count);
   const float steps_a_volt = peak > 0.0F ? static_cast<float>(kFullStep) / peak : 0.0F;
-  for (std::size_t i = 0; i < count; ++i) trace.steps[i] = static_cast<std::int16_t>(std::lround(volts[i] * steps_a_volt));
+  for (std::size_t i = 0; i < count; ++i)
+    trace.steps[i] = static_cast<std::int16_t>(std::lround(volts[i] * steps_a_volt));
   return trace;
 }
 
 }  // namespace
 
-WaveformCapture::WaveformCapture(std::vector<Channel> channels, double rate_hz, const config::CaptureSettings& settings)
+WaveformCapture::WaveformCapture(std::vector<Channel> channels, double rate_hz,
+                                 const config::CaptureSettings& settings)
     : channels_(std::move(channels)),
       before_(samples(settings.before_ms, rate_hz)),
       after_(samples(settings.after_ms, rate_hz)),
@@ -35,7 +40,8 @@ WaveformCapture::WaveformCapture(std::vector<Channel> channels, double rate_hz, 
       most_(static_cast<std::size_t>(before_ + std::max(longest_, after_))),
       bytes_a_day_(settings.per_day_mb * 1e6) {
   captures_.resize(2);
-  for (Capture& capture : captures_) capture.volts.resize(most_ * channels_.size());
+  for (Capture& capture : captures_)
+    capture.volts.resize(most_ * channels_.size());
 }
 
 void WaveformCapture::begin(Capture& capture, std::int64_t from, std::int64_t limit) {
@@ -69,14 +75,17 @@ void WaveformCapture::event_ended(SamplePosition began_at, SamplePosition at) {
 }
 
 void WaveformCapture::collect(const std::vector<HalfCycleRms>& meters) {
-  for (Capture& capture : captures_) collect(capture, meters);
+  for (Capture& capture : captures_)
+    collect(capture, meters);
 }
 
 void WaveformCapture::collect(Capture& capture, const std::vector<HalfCycleRms>& meters) const {
   if (!capture.active) return;
   const auto& held = meters.front().history().samples();
-  if (capture.collected < held.begin()) capture.from = capture.collected = held.begin();  // the stretch begins there
-  const std::int64_t until = std::min({capture.limit, held.end(), capture.from + static_cast<std::int64_t>(most_)});
+  if (capture.collected < held.begin())
+    capture.from = capture.collected = held.begin();  // the stretch begins there
+  const std::int64_t until =
+      std::min({capture.limit, held.end(), capture.from + static_cast<std::int64_t>(most_)});
   if (until <= capture.collected) return;
   for (std::size_t c = 0; c < meters.size(); ++c) {
     const auto& samples_held = meters[c].history().samples();
@@ -101,7 +110,8 @@ void WaveformCapture::finish(const std::vector<HalfCycleRms>& meters, const Samp
   give_out_until(std::numeric_limits<double>::infinity(), meters, clock, out);
 }
 
-void WaveformCapture::give_out(Capture& capture, const SampleClock& clock, std::vector<storage::Record>& out) {
+void WaveformCapture::give_out(Capture& capture, const SampleClock& clock,
+                               std::vector<storage::Record>& out) {
   capture.active = false;
   const std::int64_t to = std::min(capture.to, capture.collected);
   if (to <= capture.from) return;

@@ -12,15 +12,16 @@ namespace tramline::regulator {
 /// Finds the movements of the servo in the ratio of the two voltages.
 ///
 /// The ratio is averaged over two cycles. A movement goes on while each average differs from the one before
-/// by more than a quarter of the declared speed would make it (of 8 V/s where none is declared), in one direction; it ends
-/// after two averages at rest or with a turn. A change at more than three times the declared speed is no servo
-/// and interrupts a movement. Movements of less than 0.3 % of ratio are not counted. One phase, one thread;
-/// allocates nothing.
+/// by more than a quarter of the declared speed would make it (of 8 V/s where none is declared), in one
+/// direction; it ends after two averages at rest or with a turn. A change at more than three times the
+/// declared speed is no servo and interrupts a movement. Movements of less than 0.3 % of ratio are not
+/// counted. One phase, one thread; allocates nothing.
 class CorrectionDetector {
  public:
   CorrectionDetector(const config::RegulatorSettings& settings, double nominal_v);
 
-  /// Takes the pairs in order; a pair without ratio ends a movement. Gives the correction that has ended, if any.
+  /// Takes the pairs in order; a pair without ratio ends a movement. Gives the correction that has ended, if
+  /// any.
   [[nodiscard]] std::optional<storage::Correction> take(const HalfCyclePair& pair);
 
   /// Measuring has a hole here: a movement under way ends.

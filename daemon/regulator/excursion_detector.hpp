@@ -12,16 +12,17 @@ namespace tramline::regulator {
 
 /// Excursions of one phase of the output from the regulator's band.
 ///
-/// A servo is expected to let the output touch the edge of its band and to bring it back; so the band is taken with the
-/// regulator's tolerance, and an excursion counts only once it has lasted longer than the regulator's grace, or at once if it goes past a sag, swell or interruption threshold. It
-/// ends when the output has been in band for 0.2 s without a break, and its end is the begin of that stretch.
-/// One phase, one thread.
+/// A servo is expected to let the output touch the edge of its band and to bring it back; so the band is
+/// taken with the regulator's tolerance, and an excursion counts only once it has lasted longer than the
+/// regulator's grace, or at once if it goes past a sag, swell or interruption threshold. It ends when the
+/// output has been in band for 0.2 s without a break, and its end is the begin of that stretch. One phase,
+/// one thread.
 class ExcursionDetector {
  public:
   ExcursionDetector(Phase phase, const config::Site& site);
 
-  /// Takes the next pair; `ideal_in_band` as for ExcursionFigures. Gives the event when it begins to count and, complete
-  /// and judged, when it has ended.
+  /// Takes the next pair; `ideal_in_band` as for ExcursionFigures. Gives the event when it begins to count
+  /// and, complete and judged, when it has ended.
   [[nodiscard]] std::optional<storage::Event> take(const HalfCyclePair& pair, bool ideal_in_band);
 
   /// Measuring has a hole or its end here: closes what is open.

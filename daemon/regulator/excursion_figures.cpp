@@ -31,15 +31,16 @@ std::string beyond_range(const ExcursionFigures& figures, const config::Site& si
     return "the supply was interrupted (" + volts_text(input) + ")";
   }
   const double ratio = low ? regulator.ratio_max : regulator.ratio_min;
-  return std::string("the supply ") + (low ? "fell to " : "rose to ") + volts_text(input) + "; with the regulator's " +
-         (low ? "highest" : "lowest") + " ratio of " + ratio_text(ratio) + " the best possible output was " +
-         volts_text(ratio * input);
+  return std::string("the supply ") + (low ? "fell to " : "rose to ") + volts_text(input) +
+         "; with the regulator's " + (low ? "highest" : "lowest") + " ratio of " + ratio_text(ratio) +
+         " the best possible output was " + volts_text(ratio * input);
 }
 
 std::string too_fast(const ExcursionFigures& figures, const config::Site& site) {
   std::string text = "the supply moved between " + volts_text(figures.input_low_v) + " and " +
                      volts_text(figures.input_high_v) + ", faster than a sound servo could follow";
-  if (site.regulator->speed_v_per_s) text += " at " + volts_text(*site.regulator->speed_v_per_s) + " a second";
+  if (site.regulator->speed_v_per_s)
+    text += " at " + volts_text(*site.regulator->speed_v_per_s) + " a second";
   return text;
 }
 
@@ -54,16 +55,17 @@ std::string at_fault(const ExcursionFigures& figures, const config::Site& site) 
   if (figures.ratio_high - figures.ratio_low < kSameRatio) {
     text += "the ratio stayed at " + ratio_text(figures.worst_ratio);
   } else {
-    text += "the ratio was " + ratio_text(figures.worst_ratio) + " (between " + ratio_text(figures.ratio_low) + " and " +
-            ratio_text(figures.ratio_high) + " meanwhile)";
+    text += "the ratio was " + ratio_text(figures.worst_ratio) + " (between " +
+            ratio_text(figures.ratio_low) + " and " + ratio_text(figures.ratio_high) + " meanwhile)";
   }
-  return text + " and the output " + (figures.worst_output_v < site.regulator->target_v ? "fell to " : "rose to ") +
+  return text + " and the output " +
+         (figures.worst_output_v < site.regulator->target_v ? "fell to " : "rose to ") +
          volts_text(figures.worst_output_v);
 }
 
 std::string shares(const ExcursionFigures& figures) {
-  return "; of the time out of band " + config::format_duration(figures.supply_ns) + " was the supply's doing and " +
-         config::format_duration(figures.regulator_ns) + " the regulator's";
+  return "; of the time out of band " + config::format_duration(figures.supply_ns) +
+         " was the supply's doing and " + config::format_duration(figures.regulator_ns) + " the regulator's";
 }
 
 }  // namespace
@@ -77,7 +79,8 @@ void ExcursionFigures::take(const HalfCyclePair& pair, const config::Site& site,
   if (band.holds(pair.output_v)) return;
 
   const double target_v = site.regulator ? site.regulator->target_v : site.nominal_v;
-  if (std::isnan(worst_output_v) || std::abs(pair.output_v - target_v) > std::abs(worst_output_v - target_v)) {
+  if (std::isnan(worst_output_v) ||
+      std::abs(pair.output_v - target_v) > std::abs(worst_output_v - target_v)) {
     worst_output_v = pair.output_v;
     worst_input_v = pair.input_v;
     worst_ratio = pair.ratio;
@@ -99,7 +102,8 @@ Judgement judge(const ExcursionFigures& figures, const config::Site& site) {
   if (!site.regulator) return {storage::Origin::not_judged, "no regulator is described in the site file"};
   if (!site.has(Side::input)) return {storage::Origin::undecided, "the input is not measured at this site"};
   const std::int64_t known_ns = figures.supply_ns + figures.regulator_ns;
-  if (figures.unknown_ns >= known_ns) return {storage::Origin::undecided, "the input was not measured meanwhile"};
+  if (figures.unknown_ns >= known_ns)
+    return {storage::Origin::undecided, "the input was not measured meanwhile"};
 
   Judgement judgement;
   if (figures.regulator_ns > figures.supply_ns) {

@@ -14,7 +14,8 @@ std::optional<HalfCyclePair> PairMaker::take(const HalfCycle& half_cycle) {
   if (is_input) {
     const Input input{half_cycle.value.begin, half_cycle.value.u_rms_v};
     if (output_waits_) {
-      const bool last_is_nearer = input_known_ && std::abs(last_input_.at - waiting_.at) <= std::abs(input.at - waiting_.at);
+      const bool last_is_nearer =
+          input_known_ && std::abs(last_input_.at - waiting_.at) <= std::abs(input.at - waiting_.at);
       meet(waiting_, last_is_nearer ? last_input_.volts : input.volts);
       pair = waiting_;
       output_waits_ = false;
@@ -32,7 +33,9 @@ std::optional<HalfCyclePair> PairMaker::take(const HalfCycle& half_cycle) {
   return pair;
 }
 
-void PairMaker::restart() { input_known_ = output_waits_ = false; }
+void PairMaker::restart() {
+  input_known_ = output_waits_ = false;
+}
 
 HalfCyclePair PairMaker::one_sided(const HalfCycle& half_cycle) const {
   HalfCyclePair pair;

@@ -15,10 +15,10 @@ struct HalfCyclePair {
   measure::SamplePosition at = 0.0;
   UtcNs begin;
   std::int64_t elapsed_ns = 0;
-  std::int64_t window_ns = 0;              ///< length of one cycle
+  std::int64_t window_ns = 0;  ///< length of one cycle
   double input_v = storage::kNotMeasured;
   double output_v = storage::kNotMeasured;
-  double ratio = storage::kNotMeasured;    ///< U_out / U_in; not measured where the input is too low for one
+  double ratio = storage::kNotMeasured;  ///< U_out / U_in; not measured where the input is too low for one
 };
 
 /// Joins the half-cycle values of both sides of one phase into pairs on the output's time base.

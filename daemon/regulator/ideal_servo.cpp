@@ -24,7 +24,8 @@ double IdealServo::follow(const HalfCyclePair& pair, bool excursion) {
   }
   if (std::isnan(pair.ratio)) return ratio_ * pair.input_v;
   const bool responding = static_cast<double>(pair.elapsed_ns - out_since_ns_) / 1e9 >= settings_.response_s;
-  const double needed = std::clamp(settings_.target_v / pair.input_v, settings_.ratio_min, settings_.ratio_max);
+  const double needed =
+      std::clamp(settings_.target_v / pair.input_v, settings_.ratio_min, settings_.ratio_max);
   if (!ratio_a_second_) {
     ratio_ = needed;
   } else if (responding) {

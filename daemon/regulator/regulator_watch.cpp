@@ -23,10 +23,13 @@ RegulatorWatch::PhaseWatch::PhaseWatch(Phase of, const config::Site& site)
 }
 
 RegulatorWatch::RegulatorWatch(const config::Site& site)
-    : site_(site), band_(site.tolerated_band()), both_sides_(site.has(Side::input) && site.has(Side::output)) {
+    : site_(site),
+      band_(site.tolerated_band()),
+      both_sides_(site.has(Side::input) && site.has(Side::output)) {
   for (const auto& settings : site.channels) {
     const Phase phase = settings.channel.phase;
-    const bool known = std::any_of(phases_.begin(), phases_.end(), [&](const PhaseWatch& p) { return p.phase == phase; });
+    const bool known =
+        std::any_of(phases_.begin(), phases_.end(), [&](const PhaseWatch& p) { return p.phase == phase; });
     if (known) continue;
     place_of_[static_cast<std::size_t>(phase)] = phases_.size();
     phases_.emplace_back(phase, site);
@@ -91,7 +94,8 @@ void RegulatorWatch::take(const measure::EventMark& mark, std::vector<storage::R
   auto open = std::find_if(open_.begin(), open_.end(), same);
   if (!mark.ended) {
     if (open == open_.end()) {
-      const bool already = std::any_of(phases_.begin(), phases_.end(), [](const PhaseWatch& p) { return p.excursions.open(); });
+      const bool already = std::any_of(phases_.begin(), phases_.end(),
+                                       [](const PhaseWatch& p) { return p.excursions.open(); });
       open_.push_back({event.side, event.kind, event.begin_sample, {}, event.side == Side::input && already});
     }
   } else if (open != open_.end()) {
@@ -113,7 +117,8 @@ void RegulatorWatch::take(const measure::EventMark& mark, std::vector<storage::R
 }
 
 void RegulatorWatch::output_shows() {
-  for (OpenEvent& open : open_) open.output_showed = true;
+  for (OpenEvent& open : open_)
+    open.output_showed = true;
 }
 
 void RegulatorWatch::give_out(std::optional<storage::Correction> correction, PhaseWatch& phase,

@@ -17,12 +17,13 @@
 
 namespace tramline::regulator {
 
-/// The regulator as seen through the two voltages: the one place where the half-cycle pair (input, output, ratio) flows.
+/// The regulator as seen through the two voltages: the one place where the half-cycle pair (input, output,
+/// ratio) flows.
 ///
-/// Takes what the meter gives and adds: for each 10 minutes and phase how the band was kept and what the servo
-/// did; its corrections; excursions from the band; for each event of the output its origin, for each event of the
-/// input whether the regulator held it off. All events leave through here. Pure like the meter: no clock, no I/O.
-/// One thread.
+/// Takes what the meter gives and adds: for each 10 minutes and phase how the band was kept and what the
+/// servo did; its corrections; excursions from the band; for each event of the output its origin, for each
+/// event of the input whether the regulator held it off. All events leave through here. Pure like the meter:
+/// no clock, no I/O. One thread.
 class RegulatorWatch {
  public:
   /// `site` must outlive the watch.
@@ -58,7 +59,8 @@ class RegulatorWatch {
   void take(const HalfCyclePair& pair, PhaseWatch& phase, std::vector<storage::Record>& out);
   void take(const measure::EventMark& mark, std::vector<storage::Record>& out);
   void end_stretch(storage::EventEnd reason, std::vector<storage::Record>& out);
-  static void give_out(std::optional<storage::Correction> correction, PhaseWatch& phase, std::vector<storage::Record>& out);
+  static void give_out(std::optional<storage::Correction> correction, PhaseWatch& phase,
+                       std::vector<storage::Record>& out);
   void output_shows();
 
   const config::Site& site_;

@@ -20,7 +20,8 @@ class Recordings : public ::testing::Test {
  protected:
   Recordings() {
     const auto* test = ::testing::UnitTest::GetInstance()->current_test_info();
-    folder_ = fs::path(::testing::TempDir()) / (std::string("tramline-") + test->test_suite_name() + "-" + test->name());
+    folder_ = fs::path(::testing::TempDir()) /
+              (std::string("tramline-") + test->test_suite_name() + "-" + test->name());
     fs::remove_all(folder_);
     fs::create_directories(folder_);
   }
@@ -65,9 +66,9 @@ struct Heard {
     std::int64_t first;
     measure::GapCause gap;
   };
-  std::vector<Start> gaps;                // blocks that do not follow on
+  std::vector<Start> gaps;  // blocks that do not follow on
   std::vector<measure::ClockAnchor> anchors;
-  std::int64_t over_range = 0;            // samples at a limit
+  std::int64_t over_range = 0;  // samples at a limit
   std::string error;
   std::string end;
   StreamInfo info;
@@ -85,10 +86,13 @@ inline Heard hear(Source& source, std::size_t cut = 1000) {
     EXPECT_GT(block.frames(), 0U);
     EXPECT_LE(block.frames(), cut);
     heard.volts.resize(block.channels());
-    if (block.first.value != expected || block.gap != measure::GapCause::none) heard.gaps.push_back({block.first.value, block.gap});
+    if (block.first.value != expected || block.gap != measure::GapCause::none)
+      heard.gaps.push_back({block.first.value, block.gap});
     if (block.anchor) heard.anchors.push_back(*block.anchor);
-    for (const auto& span : block.over_range) heard.over_range += static_cast<std::int64_t>(span.frames);
-    for (std::size_t i = 0; i < block.frames(); ++i) heard.indices.push_back(block.first.value + static_cast<std::int64_t>(i));
+    for (const auto& span : block.over_range)
+      heard.over_range += static_cast<std::int64_t>(span.frames);
+    for (std::size_t i = 0; i < block.frames(); ++i)
+      heard.indices.push_back(block.first.value + static_cast<std::int64_t>(i));
     for (std::size_t c = 0; c < block.channels(); ++c) {
       const auto volts = block.channel(c);
       heard.volts[c].insert(heard.volts[c].end(), volts.begin(), volts.end());
@@ -99,7 +103,8 @@ inline Heard hear(Source& source, std::size_t cut = 1000) {
   return heard;
 }
 
-inline Heard hear(const config::RecordingSettings& settings, const std::vector<config::ChannelSettings>& channels, std::size_t cut = 1000) {
+inline Heard hear(const config::RecordingSettings& settings,
+                  const std::vector<config::ChannelSettings>& channels, std::size_t cut = 1000) {
   auto source = open_recording(settings, channels);
   if (!source) {
     Heard refused;

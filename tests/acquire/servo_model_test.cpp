@@ -40,7 +40,8 @@ struct Run {
 };
 
 /// The output at an input of `before_v` for a second and of `after_v` from then on.
-Run run(const config::ServoSettings& servo, double before_v, double after_v, double seconds, const std::vector<config::ScriptedHappening>& script = {}) {
+Run run(const config::ServoSettings& servo, double before_v, double after_v, double seconds,
+        const std::vector<config::ScriptedHappening>& script = {}) {
   ServoModel model(servo, script, 220.0, before_v, 1);
   Run result;
   double last = model.ratio();
@@ -70,7 +71,8 @@ TEST(ServoModel, ARecoveringSupplyOvershootsForAsLongAsTheSpeedSays) {
     double speed_v_per_s, until_band_s, until_110_pct_s;
   };
   // Elementary: (257.4 - 225) / S and (257.4 - 242) / S.
-  for (const Row& row : {Row{10, 3.24, 1.54}, Row{20, 1.62, 0.77}, Row{50, 0.648, 0.308}, Row{80, 0.405, 0.193}}) {
+  for (const Row& row :
+       {Row{10, 3.24, 1.54}, Row{20, 1.62, 0.77}, Row{50, 0.648, 0.308}, Row{80, 0.405, 0.193}}) {
     const auto result = run(servo_215_225(row.speed_v_per_s, 0.0), 188.0, 220.0, 6.0);
     EXPECT_NEAR(result.output_v[1000], 257.4, 0.3);
     EXPECT_NEAR(seconds_until_below(result, 225.0), row.until_band_s, 0.02) << row.speed_v_per_s;
@@ -78,23 +80,25 @@ TEST(ServoModel, ARecoveringSupplyOvershootsForAsLongAsTheSpeedSays) {
   }
 }
 
-// First-order filter: upper trip after 0.1435 tau for a jump from 2.20 to 2.574 V, lower one after 0.1699 tau for 2.20 to
-// 1.88 V (2.15 and 2.25 V behind a divider by 100; computed).
+// First-order filter: upper trip after 0.1435 tau for a jump from 2.20 to 2.574 V, lower one after 0.1699 tau
+// for 2.20 to 1.88 V (2.15 and 2.25 V behind a divider by 100; computed).
 TEST(ServoModel, TheSensingFilterDelaysTheMotorByItsTimeConstant) {
   for (const double tau : {0.5, 1.0}) {
     const auto up = run(servo_215_225(20.0, tau), 220.0, 257.4, 3.0);
     const auto down = run(servo_215_225(20.0, tau), 220.0, 188.0, 3.0);
     std::size_t up_at = 1000;
-    while (std::abs(up.output_v[up_at] - up.output_v[1000]) < 1e-9) ++up_at;
+    while (std::abs(up.output_v[up_at] - up.output_v[1000]) < 1e-9)
+      ++up_at;
     std::size_t down_at = 1000;
-    while (std::abs(down.output_v[down_at] - down.output_v[1000]) < 1e-9) ++down_at;
+    while (std::abs(down.output_v[down_at] - down.output_v[1000]) < 1e-9)
+      ++down_at;
     EXPECT_NEAR(static_cast<double>(up_at - 1000) * kStep_s, 0.1435 * tau, 0.004);
     EXPECT_NEAR(static_cast<double>(down_at - 1000) * kStep_s, 0.1699 * tau, 0.004);
   }
 }
 
-// Overshoot is about speed times tau, so with a band of 10 V 20 V/s and 0.5 s is the edge. Final volts and reversals:
-// simulated independently in steps of 0.1 ms (first order, no coasting).
+// Overshoot is about speed times tau, so with a band of 10 V 20 V/s and 0.5 s is the edge. Final volts and
+// reversals: simulated independently in steps of 0.1 ms (first order, no coasting).
 TEST(ServoModel, AFilterTooSlowForTheSpeedMakesItReverse) {
   const auto edge = run(servo_215_225(20.0, 0.5), 188.0, 220.0, 10.0);
   EXPECT_EQ(edge.reversals, 0);
@@ -111,7 +115,8 @@ TEST(ServoModel, AtAnEndStopTheOutputFollowsTheInput) {
 }
 
 TEST(ServoModel, AStuckServoKeepsItsRatioUntilItIsFreed) {
-  const auto result = run(servo_215_225(20.0, 0.0), 220.0, 188.0, 10.0, {happening(What::servo_stuck, 0.5, 5.0)});
+  const auto result =
+      run(servo_215_225(20.0, 0.0), 220.0, 188.0, 10.0, {happening(What::servo_stuck, 0.5, 5.0)});
   EXPECT_NEAR(result.output_v[5000], 188.0, 0.1);
   EXPECT_NEAR(result.output_v.back(), 215.0, 0.2);
 }
@@ -124,11 +129,13 @@ TEST(ServoModel, AServoThatSticksAtARatioStopsThere) {
 }
 
 TEST(ServoModel, AReversedServoRunsToTheWrongStopAndASlowOneTakesLonger) {
-  const auto reversed = run(servo_215_225(20.0, 0.0), 220.0, 200.0, 30.0, {happening(What::servo_reversed, 0.0)});
+  const auto reversed =
+      run(servo_215_225(20.0, 0.0), 220.0, 200.0, 30.0, {happening(What::servo_reversed, 0.0)});
   EXPECT_NEAR(reversed.output_v.back(), 0.8 * 200.0, 0.1);
   auto slow = happening(What::servo_slow, 0.0);
   slow.factor = 0.25;
-  EXPECT_NEAR(seconds_until_below(run(servo_215_225(20.0, 0.0), 188.0, 220.0, 9.0, {slow}), 225.0), 6.48, 0.1);
+  EXPECT_NEAR(seconds_until_below(run(servo_215_225(20.0, 0.0), 188.0, 220.0, 9.0, {slow}), 225.0), 6.48,
+              0.1);
 }
 
 TEST(ServoModel, HuntingComesFromASlowerFilterAndOpenMeansNoOutput) {
@@ -136,7 +143,9 @@ TEST(ServoModel, HuntingComesFromASlowerFilterAndOpenMeansNoOutput) {
   hunting.factor = 20.0;
   EXPECT_GE(run(servo_215_225(80.0, 0.05), 188.0, 220.0, 20.0, {hunting}).reversals, 2);
   EXPECT_EQ(run(servo_215_225(80.0, 0.05), 188.0, 220.0, 20.0).reversals, 0);
-  EXPECT_EQ(run(servo_215_225(60.0, 0.05), 220.0, 220.0, 3.0, {happening(What::output_open, 2.0)}).output_v.back(), 0.0);
+  EXPECT_EQ(
+      run(servo_215_225(60.0, 0.05), 220.0, 220.0, 3.0, {happening(What::output_open, 2.0)}).output_v.back(),
+      0.0);
 }
 
 TEST(ServoModel, TheLoadPullsTheOutputDownThroughTheImpedance) {

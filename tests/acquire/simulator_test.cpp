@@ -63,7 +63,8 @@ Heard simulated(const config::SimulatorSettings& settings, const config::Site& s
 
 double rms(const std::vector<float>& volts, std::size_t from, std::size_t count) {
   double energy = 0.0;
-  for (std::size_t i = from; i < from + count; ++i) energy += static_cast<double>(volts[i]) * static_cast<double>(volts[i]);
+  for (std::size_t i = from; i < from + count; ++i)
+    energy += static_cast<double>(volts[i]) * static_cast<double>(volts[i]);
   return std::sqrt(energy / static_cast<double>(count));
 }
 
@@ -100,7 +101,8 @@ TEST(Simulator, TheSameSeedGivesTheSameSamplesHoweverManyAreAskedFor) {
   settings.script = {scripted(What::sag, 1.0, 0.5, 60.0)};
   const auto site = site_with(kBoth);
   const auto whole = simulated(settings, site, 1000000);
-  for (const std::size_t cut : {1U, 7U, 1000U}) EXPECT_EQ(simulated(settings, site, cut).volts, whole.volts) << cut;
+  for (const std::size_t cut : {1U, 7U, 1000U})
+    EXPECT_EQ(simulated(settings, site, cut).volts, whole.volts) << cut;
   settings.seed = 2;
   EXPECT_NE(simulated(settings, site).volts, whole.volts);
 }
@@ -114,8 +116,11 @@ TEST(Simulator, ASagBeginsAtThePointOnWaveAskedForAndLastsAsLong) {
     const auto volts = simulated(settings, site_with(kBoth)).volts[0];
     // Where the samples leave the undisturbed sine.
     std::size_t begin = 0;
-    const auto sine = [](std::size_t n) { return 220.0 * std::numbers::sqrt2 * std::sin(2.0 * std::numbers::pi * static_cast<double>(n) / 128.0); };
-    while (std::abs(static_cast<double>(volts[begin]) - sine(begin)) < 1.0) ++begin;
+    const auto sine = [](std::size_t n) {
+      return 220.0 * std::numbers::sqrt2 * std::sin(2.0 * std::numbers::pi * static_cast<double>(n) / 128.0);
+    };
+    while (std::abs(static_cast<double>(volts[begin]) - sine(begin)) < 1.0)
+      ++begin;
     const double angle = std::fmod(static_cast<double>(begin) / 128.0 * 360.0, 360.0);
     EXPECT_NEAR(angle, degrees, 5.7) << degrees;  // two samples: at a crossing the first ones hardly differ
     EXPECT_GE(begin, 6419U);
@@ -130,7 +135,8 @@ TEST(Simulator, AnInterruptionLeavesOnlyNoise) {
   settings.grid.sensor_noise_v = 0.05;
   settings.script = {scripted(What::interruption, 1.0, 1.0)};
   const auto heard = simulated(settings, site_with(kBoth));
-  for (const auto& volts : heard.volts) EXPECT_NEAR(rms(volts, 7000, 5000), 0.05, 0.005);
+  for (const auto& volts : heard.volts)
+    EXPECT_NEAR(rms(volts, 7000, 5000), 0.05, 0.005);
 }
 
 TEST(Simulator, ALevelRampsHoldsAndRampsBack) {
@@ -164,13 +170,15 @@ TEST(Simulator, TheOutputIsTheInputTimesOneSmoothRatio) {
 }
 
 TEST(Simulator, ThreePhasesStand120DegreesApartAndASagMayTakeOneOfThem) {
-  const std::vector<Channel> channels = {{Side::input, Phase::l1}, {Side::input, Phase::l2}, {Side::input, Phase::l3}};
+  const std::vector<Channel> channels = {
+      {Side::input, Phase::l1}, {Side::input, Phase::l2}, {Side::input, Phase::l3}};
   auto settings = steady(3.0);
   auto sag = scripted(What::sag, 1.0, 1.0, 50.0);
   sag.phases = {Phase::l2};
   settings.script = {sag};
   const auto heard = simulated(settings, site_with(channels, 3, false));
-  for (std::size_t i = 0; i < 1280; ++i) EXPECT_NEAR(heard.volts[0][i] + heard.volts[1][i] + heard.volts[2][i], 0.0, 0.05);
+  for (std::size_t i = 0; i < 1280; ++i)
+    EXPECT_NEAR(heard.volts[0][i] + heard.volts[1][i] + heard.volts[2][i], 0.0, 0.05);
   // L2 follows L1 by a third of a cycle of 128 samples.
   EXPECT_NEAR(heard.volts[1][32 + 43], heard.volts[0][32], 1.0);
   EXPECT_NEAR(rms(heard.volts[0], 7680, 1280), 220.0, 0.05);

@@ -17,31 +17,39 @@ using ::testing::HasSubstr;
 
 std::string le(std::uint64_t value, int bytes) {
   std::string out;
-  for (int i = 0; i < bytes; ++i) out += static_cast<char>(value >> (8 * i) & 0xff);
+  for (int i = 0; i < bytes; ++i)
+    out += static_cast<char>(value >> (8 * i) & 0xff);
   return out;
 }
 
 std::string format_chunk(int tag, int channels, int rate, int bits) {
   const int align = channels * bits / 8;
-  return "fmt " + le(16, 4) + le(static_cast<std::uint64_t>(tag), 2) + le(static_cast<std::uint64_t>(channels), 2) + le(static_cast<std::uint64_t>(rate), 4) +
-         le(static_cast<std::uint64_t>(rate * align), 4) + le(static_cast<std::uint64_t>(align), 2) + le(static_cast<std::uint64_t>(bits), 2);
+  return "fmt " + le(16, 4) + le(static_cast<std::uint64_t>(tag), 2) +
+         le(static_cast<std::uint64_t>(channels), 2) + le(static_cast<std::uint64_t>(rate), 4) +
+         le(static_cast<std::uint64_t>(rate * align), 4) + le(static_cast<std::uint64_t>(align), 2) +
+         le(static_cast<std::uint64_t>(bits), 2);
 }
 
-std::string wav(const std::string& format, const std::string& data, std::uint64_t stated = std::numeric_limits<std::uint64_t>::max()) {
-  const std::string chunks = "WAVE" + format + "data" + le(stated == std::numeric_limits<std::uint64_t>::max() ? data.size() : stated, 4) + data;
+std::string wav(const std::string& format, const std::string& data,
+                std::uint64_t stated = std::numeric_limits<std::uint64_t>::max()) {
+  const std::string chunks =
+      "WAVE" + format + "data" +
+      le(stated == std::numeric_limits<std::uint64_t>::max() ? data.size() : stated, 4) + data;
   return "RIFF" + le(chunks.size(), 4) + chunks;
 }
 
 std::string samples16(const std::vector<int>& values) {
   std::string out;
-  for (const int v : values) out += le(static_cast<std::uint64_t>(v), 2);
+  for (const int v : values)
+    out += le(static_cast<std::uint64_t>(v), 2);
   return out;
 }
 
 using Wav = Recordings;
 
 TEST_F(Wav, SixteenBitsComeOutAsSharesOfFullScaleTimesTheScale) {
-  const auto path = file("a.wav", wav(format_chunk(1, 2, 6400, 16), samples16({0, 16384, 1, -16384, -32767, 32767})));
+  const auto path =
+      file("a.wav", wav(format_chunk(1, 2, 6400, 16), samples16({0, 16384, 1, -16384, -32767, 32767})));
   const auto heard = hear(from(path), wanted({"1", "2"}, 500.0));
   ASSERT_EQ(heard.volts.size(), 2U);
   EXPECT_FLOAT_EQ(heard.volts[0][1], 500.0F / 32768.0F);  // 15.2588 mV a step at 500 V full scale
@@ -55,7 +63,8 @@ TEST_F(Wav, SixteenBitsComeOutAsSharesOfFullScaleTimesTheScale) {
 
 // Bytes and values computed by hand from the format (two's complement, little-endian).
 TEST_F(Wav, TwentyFourBitsAreSignExtended) {
-  const std::string data = std::string("\x56\x34\x12", 3) + std::string("\xff\xff\xff", 3) + std::string("\x00\x00\x80", 3);
+  const std::string data =
+      std::string("\x56\x34\x12", 3) + std::string("\xff\xff\xff", 3) + std::string("\x00\x00\x80", 3);
   const auto heard = hear(from(file("a.wav", wav(format_chunk(1, 1, 6400, 24), data))), wanted({"1"}));
   ASSERT_EQ(heard.volts[0].size(), 3U);
   EXPECT_NEAR(heard.volts[0][0], 0.142222166, 1e-7);
@@ -65,9 +74,11 @@ TEST_F(Wav, TwentyFourBitsAreSignExtended) {
 }
 
 TEST_F(Wav, ThirtyTwoBitsAndExtensibleFormatsAreRead) {
-  std::string extensible = "fmt " + le(40, 4) + le(0xfffe, 2) + le(1, 2) + le(8000, 4) + le(32000, 4) + le(4, 2) + le(32, 2) + le(22, 2) + le(32, 2) +
-                           le(4, 4) + le(1, 2) + std::string("\x00\x00\x00\x00\x10\x00\x80\x00\x00\xaa\x00\x38\x9b\x71", 14);
-  const auto heard = hear(from(file("a.wav", wav(extensible, le(0x40000000, 4) + le(0xc0000000, 4)))), wanted({"1"}));
+  std::string extensible = "fmt " + le(40, 4) + le(0xfffe, 2) + le(1, 2) + le(8000, 4) + le(32000, 4) +
+                           le(4, 2) + le(32, 2) + le(22, 2) + le(32, 2) + le(4, 4) + le(1, 2) +
+                           std::string("\x00\x00\x00\x00\x10\x00\x80\x00\x00\xaa\x00\x38\x9b\x71", 14);
+  const auto heard =
+      hear(from(file("a.wav", wav(extensible, le(0x40000000, 4) + le(0xc0000000, 4)))), wanted({"1"}));
   ASSERT_EQ(heard.volts.size(), 1U) << heard.error;
   EXPECT_FLOAT_EQ(heard.volts[0][0], 0.5F);
   EXPECT_FLOAT_EQ(heard.volts[0][1], -0.5F);
@@ -93,7 +104,8 @@ TEST_F(Wav, FloatsThatAreNoNumberBecomeAGap) {
 
 TEST_F(Wav, UnknownChunksAreSkippedAndOddOnesPadded) {
   const std::string odd = "LIST" + le(3, 4) + "abc" + '\0';
-  const std::string content = "WAVE" + odd + format_chunk(1, 1, 6400, 16) + odd + "data" + le(2, 4) + samples16({7});
+  const std::string content =
+      "WAVE" + odd + format_chunk(1, 1, 6400, 16) + odd + "data" + le(2, 4) + samples16({7});
   const auto heard = hear(from(file("a.wav", "RIFF" + le(content.size(), 4) + content)), wanted({""}));
   ASSERT_EQ(heard.volts.size(), 1U) << heard.error;
   EXPECT_FLOAT_EQ(heard.volts[0][0], 7.0F / 32768.0F);
@@ -101,7 +113,8 @@ TEST_F(Wav, UnknownChunksAreSkippedAndOddOnesPadded) {
 
 TEST_F(Wav, DataOfUnknownSizeGoesToTheEndOfTheFile) {
   for (const std::uint64_t stated : {0ULL, 0xffffffffULL}) {
-    const auto heard = hear(from(file("a.wav", wav(format_chunk(1, 1, 6400, 16), samples16({1, 2, 3}), stated))), wanted({"1"}));
+    const auto heard = hear(
+        from(file("a.wav", wav(format_chunk(1, 1, 6400, 16), samples16({1, 2, 3}), stated))), wanted({"1"}));
     EXPECT_EQ(heard.volts[0].size(), 3U);
     EXPECT_FALSE(heard.info.frames.has_value());
   }
@@ -109,16 +122,20 @@ TEST_F(Wav, DataOfUnknownSizeGoesToTheEndOfTheFile) {
 
 TEST_F(Wav, ALongFileTakesItsSizeFromTheDs64Chunk) {
   const std::string ds64 = "ds64" + le(28, 4) + le(100, 8) + le(4, 8) + le(2, 8) + le(0, 4);
-  const std::string content = "WAVE" + ds64 + format_chunk(1, 1, 6400, 16) + "data" + le(0xffffffff, 4) + samples16({1, 2, 99});
+  const std::string content =
+      "WAVE" + ds64 + format_chunk(1, 1, 6400, 16) + "data" + le(0xffffffff, 4) + samples16({1, 2, 99});
   const auto heard = hear(from(file("a.wav", "RF64" + le(0xffffffff, 4) + content)), wanted({"1"}));
   ASSERT_EQ(heard.volts.size(), 1U) << heard.error;
   EXPECT_EQ(heard.volts[0].size(), 2U);
 }
 
 TEST_F(Wav, ATruncatedFileGivesWhatItHasAndSaysSo) {
-  const auto heard = hear(from(file("a.wav", wav(format_chunk(1, 2, 6400, 16), samples16({1, 2, 3, 4, 5}), 400))), wanted({"1", "2"}));
+  const auto heard =
+      hear(from(file("a.wav", wav(format_chunk(1, 2, 6400, 16), samples16({1, 2, 3, 4, 5}), 400))),
+           wanted({"1", "2"}));
   EXPECT_EQ(heard.volts[0].size(), 2U);
-  EXPECT_THAT(heard.end, HasSubstr("the file ends early: 2 of 100 frames are there, the last frame is cut short"));
+  EXPECT_THAT(heard.end,
+              HasSubstr("the file ends early: 2 of 100 frames are there, the last frame is cut short"));
 }
 
 TEST_F(Wav, ATimeGivenDatesIt) {
@@ -139,7 +156,8 @@ TEST_F(Wav, WhatIsNoWavFileIsRefusedWithItsPlace) {
       {"empty", "", "the file is empty"},
       {"text", "u_V,i_mA\n1,2\n", "this is no WAV file"},
       {"cut in the head", "RIFF\x10", "this is no WAV file"},
-      {"no data", "RIFF" + le(30, 4) + "WAVE" + format_chunk(1, 1, 6400, 16), "ends before its samples begin"},
+      {"no data", "RIFF" + le(30, 4) + "WAVE" + format_chunk(1, 1, 6400, 16),
+       "ends before its samples begin"},
       {"data first", "RIFF" + le(30, 4) + "WAVE" + "data" + le(2, 4) + "ab", "before their format"},
       {"no channels", wav(format_chunk(1, 0, 6400, 16), "ab"), "no channels"},
       {"8 bits", wav(format_chunk(1, 1, 6400, 8), "ab"), "PCM of 16, 24 or 32 bits"},
@@ -151,8 +169,10 @@ TEST_F(Wav, WhatIsNoWavFileIsRefusedWithItsPlace) {
     EXPECT_THAT(hear(from(file("a.wav", bad.content)), wanted({"1"})).error, HasSubstr(bad.says)) << bad.what;
   }
   const auto path = file("a.wav", wav(format_chunk(1, 2, 6400, 16), samples16({1, 2})));
-  EXPECT_THAT(hear(from(path), wanted({"3"})).error, HasSubstr("there is no channel \"3\" in it; it has 1, 2"));
-  EXPECT_THAT(hear(from((folder_ / "none.wav").string()), wanted({"1"})).error, HasSubstr("cannot be opened"));
+  EXPECT_THAT(hear(from(path), wanted({"3"})).error,
+              HasSubstr("there is no channel \"3\" in it; it has 1, 2"));
+  EXPECT_THAT(hear(from((folder_ / "none.wav").string()), wanted({"1"})).error,
+              HasSubstr("cannot be opened"));
 }
 
 // Frames, ends and r.m.s. read independently by Python's `wave` and NumPy.

@@ -45,7 +45,8 @@ TEST(RecordQueue, GivesEventsBeforeDetailsAndEachInTheirOrder) {
 TEST(RecordQueue, AFullQueueDropsDetailsFirstAndCountsThem) {
   RecordQueue queue({4, 2, 1000});
   std::vector<Record> records = events(0, 4);
-  for (int i = 0; i < 5; ++i) records.emplace_back(Aggregate{});
+  for (int i = 0; i < 5; ++i)
+    records.emplace_back(Aggregate{});
   queue.put(records);
   const auto batch = queue.take(kNoPatience);
   EXPECT_EQ(batch.records.size(), 6U);

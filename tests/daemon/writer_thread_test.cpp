@@ -18,7 +18,8 @@ TEST(WriterThread, WritesWhatIsInTheQueueBeforeItGoes) {
   {
     auto logbook = storage::LogbookWriter::open(path, {});
     ASSERT_TRUE(logbook) << logbook.error().text();
-    WriterThread writer(std::move(logbook).value(), {}, queue, [](bool trouble, const std::string& words) { EXPECT_FALSE(trouble) << words; });
+    WriterThread writer(std::move(logbook).value(), {}, queue,
+                        [](bool trouble, const std::string& words) { EXPECT_FALSE(trouble) << words; });
     std::vector<storage::Record> records;
     records.emplace_back(storage::SessionBegin{"test", "source", 6400.0, true, UtcNs{0}});
     records.emplace_back(storage::CoverageBegin{{0}, {0}, "test began"});
@@ -36,7 +37,9 @@ TEST(WriterThread, WritesWhatIsInTheQueueBeforeItGoes) {
   auto reader = storage::LogbookReader::open(path);
   ASSERT_TRUE(reader);
   EXPECT_EQ(reader.value().events({}).value().size(), 500U);
-  EXPECT_EQ(reader.value().aggregates(storage::Interval::ten_minutes, {UtcNs{-1}, std::nullopt}).value().size(), 500U);
+  EXPECT_EQ(
+      reader.value().aggregates(storage::Interval::ten_minutes, {UtcNs{-1}, std::nullopt}).value().size(),
+      500U);
   std::filesystem::remove_all(folder);
 }
 

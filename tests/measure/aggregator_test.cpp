@@ -17,10 +17,13 @@ constexpr double kSlowRate = 1600.0;  // enough for these, and quick
 constexpr std::int64_t kTenMinutesNs = 600 * kNsPerSecond;
 
 MeterOutput run(const Signal& signal, double seconds, UtcNs begin, double nominal_hz = 50.0) {
-  return metered(site_of(kOneInput, 230.0, nominal_hz), {sampled(signal, seconds, kSlowRate)}, kSlowRate, begin);
+  return metered(site_of(kOneInput, 230.0, nominal_hz), {sampled(signal, seconds, kSlowRate)}, kSlowRate,
+                 begin);
 }
 
-double step_at(double t, double at, double before, double after) { return t < at ? before : after; }
+double step_at(double t, double at, double before, double after) {
+  return t < at ? before : after;
+}
 
 // Root of the mean of the squares, not the mean: IEC 61000-4-30:2015, 4.5 (from memory); values computed.
 TEST(Aggregator, TenBlocksAt230AndFiveAt220Make226_716) {
@@ -52,9 +55,11 @@ struct Overlap {
   int blocks;
 };
 
-// Blocks that begin in the ten minutes, the last one running over the tick: IEC 61000-4-30:2015, 4.5 (from memory).
+// Blocks that begin in the ten minutes, the last one running over the tick: IEC 61000-4-30:2015, 4.5 (from
+// memory).
 TEST(Aggregator, ABlockUnderWayAtTheTenMinuteTickBelongsToTheOldInterval) {
-  for (const Overlap& c : {Overlap{50.0, 50.02, 3002}, Overlap{50.0, 49.95, 2997}, Overlap{60.0, 60.05, 3003}}) {
+  for (const Overlap& c :
+       {Overlap{50.0, 50.02, 3002}, Overlap{50.0, 49.95, 2997}, Overlap{60.0, 60.05, 3003}}) {
     // Begin just before a tick, so that the first whole interval begins at one.
     const auto out = run(sine(230.0, c.hz), 605.0, UtcNs{kTenMinutesNs - 2 * kNsPerSecond}, c.nominal_hz);
     const auto ten_minutes = aggregates_of(out, Interval::ten_minutes);
@@ -77,7 +82,8 @@ TEST(Aggregator, AThreeSecondIntervalUnderWayAtTheTickRunsToItsEndBesideTheNewSe
   EXPECT_EQ(overlapping[0].blocks, 15);
   const auto all = aggregates_of(out, Interval::three_seconds);
   EXPECT_TRUE(std::any_of(all.begin(), all.end(), [](const auto& a) {
-    return a.begin.value >= kTenMinutesNs && a.begin.value < kTenMinutesNs + 20 * kNsPerMillisecond && a.blocks == 15;
+    return a.begin.value >= kTenMinutesNs && a.begin.value < kTenMinutesNs + 20 * kNsPerMillisecond &&
+           a.blocks == 15;
   }));
 }
 
@@ -85,7 +91,8 @@ TEST(Aggregator, AShortSagFlagsItsIntervalsAndNotTheirNeighbours) {
   const auto out = run(sine(230.0, 50.0, between(31.05, 31.15, 0.5, kSlowRate)), 60.0, {0});
   int flagged = 0;
   for (const auto& a : aggregates_of(out, Interval::three_seconds)) {
-    const bool holds_it = a.begin.value < 31'150 * kNsPerMillisecond && a.end.value > 31'050 * kNsPerMillisecond;
+    const bool holds_it =
+        a.begin.value < 31'150 * kNsPerMillisecond && a.end.value > 31'050 * kNsPerMillisecond;
     EXPECT_EQ(a.flagged, holds_it) << a.begin.value;
     flagged += a.flagged ? 1 : 0;
   }
@@ -93,8 +100,9 @@ TEST(Aggregator, AShortSagFlagsItsIntervalsAndNotTheirNeighbours) {
 }
 
 TEST(Aggregator, AnEventOnOneSideDoesNotFlagTheOther) {
-  const std::vector<std::vector<float>> channels = {sampled(sine(230.0, 50.0, between(10.0, 10.2, 0.5, kSlowRate)), 20.0, kSlowRate),
-                                                    sampled(sine(230.0, 50.0), 20.0, kSlowRate)};
+  const std::vector<std::vector<float>> channels = {
+      sampled(sine(230.0, 50.0, between(10.0, 10.2, 0.5, kSlowRate)), 20.0, kSlowRate),
+      sampled(sine(230.0, 50.0), 20.0, kSlowRate)};
   const auto out = metered(site_of(kInputAndOutput), channels, kSlowRate);
   for (const auto& a : aggregates_of(out, Interval::three_seconds)) {
     EXPECT_TRUE(a.channel.side == Side::input || !a.flagged);

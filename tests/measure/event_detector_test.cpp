@@ -21,28 +21,33 @@ MeterOutput one_phase(const Signal& signal, double seconds) {
 }
 
 /// What is left of a phase as a function of time, for three phases 120 degrees apart.
-MeterOutput three_phases(std::function<double(double)> l1, std::function<double(double)> l2, std::function<double(double)> l3,
-                         double seconds) {
-  return metered(site_of(kThreeInputs), {sampled(sine(230.0, 50.0, l1), seconds), sampled(sine(230.0, 50.0, l2, -120.0), seconds),
-                                         sampled(sine(230.0, 50.0, l3, 120.0), seconds)});
+MeterOutput three_phases(std::function<double(double)> l1, std::function<double(double)> l2,
+                         std::function<double(double)> l3, double seconds) {
+  return metered(site_of(kThreeInputs),
+                 {sampled(sine(230.0, 50.0, l1), seconds), sampled(sine(230.0, 50.0, l2, -120.0), seconds),
+                  sampled(sine(230.0, 50.0, l3, 120.0), seconds)});
 }
 
-double steady(double) { return 1.0; }
+double steady(double) {
+  return 1.0;
+}
 
 struct Step {
-  double residual;        // per unit, for `half_cycles` half-cycles from a zero crossing
+  double residual;  // per unit, for `half_cycles` half-cycles from a zero crossing
   int half_cycles;
-  int duration;           // in half-cycles; 0: no event
-  double extreme;         // per unit
+  int duration;    // in half-cycles; 0: no event
+  double extreme;  // per unit
 };
 
-// Definition of IEC 61000-4-30 (5.4; from memory), values computed independently from it: edge(r) = sqrt((1 + r^2)/2).
+// Definition of IEC 61000-4-30 (5.4; from memory), values computed independently from it: edge(r) = sqrt((1 +
+// r^2)/2).
 class SagTable : public ::testing::TestWithParam<Step> {};
 
 TEST_P(SagTable, DurationAndResidualAreThoseOfTheDefinition) {
   const Step& step = GetParam();
   const double from = 50.0 * kCycle_s;
-  const auto out = one_phase(sine(230.0, 50.0, between(from, from + step.half_cycles * kCycle_s / 2.0, step.residual)), 3.0);
+  const auto out = one_phase(
+      sine(230.0, 50.0, between(from, from + step.half_cycles * kCycle_s / 2.0, step.residual)), 3.0);
   std::vector<storage::Event> sags = ended_events(out);
   std::erase_if(sags, [](const auto& e) { return e.kind != EventKind::sag; });
   if (step.duration == 0) {
@@ -57,16 +62,18 @@ TEST_P(SagTable, DurationAndResidualAreThoseOfTheDefinition) {
 }
 
 INSTANTIATE_TEST_SUITE_P(Definition, SagTable,
-                         ::testing::Values(Step{0.0, 1, 2, 0.70711}, Step{0.0, 2, 3, 0.0}, Step{0.4, 1, 2, 0.76158},
-                                           Step{0.4, 10, 11, 0.4}, Step{0.7, 3, 4, 0.7}, Step{0.7, 50, 51, 0.7},
-                                           Step{0.8, 1, 0, 0.0}, Step{0.8, 4, 4, 0.8}, Step{0.84, 4, 3, 0.84},
+                         ::testing::Values(Step{0.0, 1, 2, 0.70711}, Step{0.0, 2, 3, 0.0},
+                                           Step{0.4, 1, 2, 0.76158}, Step{0.4, 10, 11, 0.4},
+                                           Step{0.7, 3, 4, 0.7}, Step{0.7, 50, 51, 0.7}, Step{0.8, 1, 0, 0.0},
+                                           Step{0.8, 4, 4, 0.8}, Step{0.84, 4, 3, 0.84},
                                            Step{0.85, 2, 1, 0.85}));
 
 class SwellTable : public ::testing::TestWithParam<Step> {};
 
 TEST_P(SwellTable, DurationAndMaximumAreThoseOfTheDefinition) {
   const Step& step = GetParam();
-  const auto out = one_phase(sine(230.0, 50.0, between(1.0, 1.0 + step.half_cycles * kCycle_s / 2.0, step.residual)), 4.0);
+  const auto out =
+      one_phase(sine(230.0, 50.0, between(1.0, 1.0 + step.half_cycles * kCycle_s / 2.0, step.residual)), 4.0);
   const auto swells = ended_events(out);
   ASSERT_EQ(swells.size(), 1U);
   EXPECT_EQ(swells[0].kind, EventKind::swell);
@@ -76,11 +83,13 @@ TEST_P(SwellTable, DurationAndMaximumAreThoseOfTheDefinition) {
 
 // Same source; 117 % for 81 cycles is the swell of a servo stuck at 1.17 (common practice, no source).
 INSTANTIATE_TEST_SUITE_P(Definition, SwellTable,
-                         ::testing::Values(Step{1.25, 6, 7, 1.25}, Step{1.17, 6, 6, 1.17}, Step{1.13, 6, 5, 1.13},
-                                           Step{1.17, 162, 162, 1.17}));
+                         ::testing::Values(Step{1.25, 6, 7, 1.25}, Step{1.17, 6, 6, 1.17},
+                                           Step{1.13, 6, 5, 1.13}, Step{1.17, 162, 162, 1.17}));
 
 TEST(EventDetector, SagThatHoversBetweenThresholdAndHysteresisStaysOneEvent) {
-  const auto level = [](double t) { return t < 1 ? 1.0 : t < 2 ? 0.89 : t < 3 ? 0.91 : t < 4 ? 0.89 : t < 5 ? 0.93 : 1.0; };
+  const auto level = [](double t) {
+    return t < 1 ? 1.0 : t < 2 ? 0.89 : t < 3 ? 0.91 : t < 4 ? 0.89 : t < 5 ? 0.93 : 1.0;
+  };
   const auto events = ended_events(one_phase(sine(230.0, 50.0, level), 6.0));
   ASSERT_EQ(events.size(), 1U);
   EXPECT_NEAR(events[0].extreme_v, 0.89 * 230.0, 0.05);
@@ -122,7 +131,8 @@ TEST(EventDetector, TheLossOfOnePhaseOfThreeIsASagAndNoInterruption) {
 }
 
 TEST(EventDetector, AThreePhaseInterruptionEndsWithTheFirstPhaseAndItsSagWithTheLast) {
-  const auto events = ended_events(three_phases(between(1.0, 2.0, 0.0), between(1.0, 2.5, 0.0), between(1.0, 2.5, 0.0), 4.0));
+  const auto events =
+      ended_events(three_phases(between(1.0, 2.0, 0.0), between(1.0, 2.5, 0.0), between(1.0, 2.5, 0.0), 4.0));
   ASSERT_EQ(events.size(), 2U);
   EXPECT_EQ(events[0].kind, EventKind::interruption);
   EXPECT_NEAR(static_cast<double>(events[0].duration_ns) / 1e9, 1.0, kCycle_s);

@@ -26,9 +26,11 @@ struct Steady {
 
 // Range: IEC 61000-4-30:2015, 5.1 (from memory); 2 mHz is this project's own tolerance.
 TEST(FrequencyMeter, SteadyFrequenciesAreWithinTwoMillihertzOverTheRange) {
-  for (const Steady& c : {Steady{50.0, 42.5}, Steady{50.0, 49.95}, Steady{50.0, 50.05}, Steady{50.0, 57.5}, Steady{60.0, 51.0},
-                          Steady{60.0, 59.95}, Steady{60.0, 60.05}, Steady{60.0, 69.0}}) {
-    const auto values = frequencies(sine(230.0, c.hz, [](double) { return 1.0; }, 35.0), 31.0, c.nominal_hz);
+  for (const Steady& c : {Steady{50.0, 42.5}, Steady{50.0, 49.95}, Steady{50.0, 50.05}, Steady{50.0, 57.5},
+                          Steady{60.0, 51.0}, Steady{60.0, 59.95}, Steady{60.0, 60.05}, Steady{60.0, 69.0}}) {
+    const auto values = frequencies(sine(
+                                        230.0, c.hz, [](double) { return 1.0; }, 35.0),
+                                    31.0, c.nominal_hz);
     ASSERT_GE(values.size(), 3U);
     for (const auto& f : values) {
       EXPECT_NEAR(f.hz, c.hz, 0.002);
@@ -42,8 +44,9 @@ TEST(FrequencyMeter, SteadyFrequenciesAreWithinTwoMillihertzOverTheRange) {
 // 0.3 cycle after the tick.
 TEST(FrequencyMeter, OnlyWholeCyclesWithinTheTenSecondsCount) {
   // The tick comes one second, 49.9 cycles, after the first sample.
-  const auto values =
-      frequencies(sine(230.0, 49.9, [](double) { return 1.0; }, -0.2 * 360.0), 22.0, 50.0, UtcNs{9 * kNsPerSecond});
+  const auto values = frequencies(sine(
+                                      230.0, 49.9, [](double) { return 1.0; }, -0.2 * 360.0),
+                                  22.0, 50.0, UtcNs{9 * kNsPerSecond});
   ASSERT_GE(values.size(), 3U);
   EXPECT_EQ(values[1].begin.value, 10 * kNsPerSecond);
   EXPECT_EQ(values[1].cycles, 498);
@@ -57,7 +60,8 @@ TEST(FrequencyMeter, ASlowRampGivesTheMeanOfEachTenSeconds) {
   };
   const auto values = frequencies(ramp, 100.5);
   ASSERT_GE(values.size(), 10U);
-  for (std::size_t i = 0; i < 10; ++i) EXPECT_NEAR(values[i].hz, 49.55 + 0.1 * static_cast<double>(i), 0.002) << i;
+  for (std::size_t i = 0; i < 10; ++i)
+    EXPECT_NEAR(values[i].hz, 49.55 + 0.1 * static_cast<double>(i), 0.002) << i;
 }
 
 TEST(FrequencyMeter, TenSecondsInWhichTheWaveformWasGoneAreNotTrusted) {
@@ -70,7 +74,10 @@ TEST(FrequencyMeter, TenSecondsInWhichTheWaveformWasGoneAreNotTrusted) {
 }
 
 TEST(FrequencyMeter, AJumpInPhaseMakesItsTenSecondsUntrustworthy) {
-  const auto jumping = [](double t) { return sine(230.0, 50.0, [](double) { return 1.0; }, t < 15.0 ? 0.0 : 70.0)(t); };
+  const auto jumping = [](double t) {
+    return sine(
+        230.0, 50.0, [](double) { return 1.0; }, t < 15.0 ? 0.0 : 70.0)(t);
+  };
   const auto values = frequencies(jumping, 31.0);
   ASSERT_GE(values.size(), 3U);
   EXPECT_TRUE(values[0].trusted);
@@ -81,9 +88,11 @@ TEST(FrequencyMeter, AJumpInPhaseMakesItsTenSecondsUntrustworthy) {
 TEST(FrequencyMeter, HarmonicsThatAddZeroCrossingsDoNotDisturbIt) {
   const auto wave = [](double t) {
     const double a = 2.0 * std::numbers::pi * 50.0 * t;
-    return 325.0 * (std::sin(a) - 0.1 * std::sin(3.0 * a) - 0.1 * std::sin(5.0 * a) + 0.2 * std::sin(15.0 * a));
+    return 325.0 *
+           (std::sin(a) - 0.1 * std::sin(3.0 * a) - 0.1 * std::sin(5.0 * a) + 0.2 * std::sin(15.0 * a));
   };
-  for (const auto& f : frequencies(wave, 21.0)) EXPECT_NEAR(f.hz, 50.0, 0.001);
+  for (const auto& f : frequencies(wave, 21.0))
+    EXPECT_NEAR(f.hz, 50.0, 0.001);
 }
 
 }  // namespace

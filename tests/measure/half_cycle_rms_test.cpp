@@ -18,8 +18,8 @@ using testing::kRate;
 using testing::sampled;
 using testing::sine;
 
-std::vector<HalfCycleValue> half_cycles(const std::vector<float>& volts, double nominal_hz = 50.0, double nominal_v = 230.0,
-                                        double rate_hz = kRate) {
+std::vector<HalfCycleValue> half_cycles(const std::vector<float>& volts, double nominal_hz = 50.0,
+                                        double nominal_v = 230.0, double rate_hz = kRate) {
   HalfCycleRms meter(rate_hz, nominal_hz, nominal_v, 0, 4096);
   std::vector<HalfCycleValue> values;
   std::vector<GridTick> ticks;
@@ -33,7 +33,8 @@ std::vector<HalfCycleValue> half_cycles(const std::vector<float>& volts, double 
 
 double worst_deviation(const std::vector<HalfCycleValue>& values, double expected_v) {
   double worst = 0.0;
-  for (const auto& value : values) worst = std::max(worst, std::abs(value.u_rms_v - expected_v));
+  for (const auto& value : values)
+    worst = std::max(worst, std::abs(value.u_rms_v - expected_v));
   return worst;
 }
 
@@ -44,7 +45,8 @@ TEST(HalfCycleRms, SteadySinesAreWithinTwoHundredthsOfAPercentOverTheWholeRange)
       for (const double level : {0.10, 0.45, 0.80, 1.15, 1.50}) {
         const auto values = half_cycles(sampled(sine(230.0 * level, nominal_hz * relative), 2.0), nominal_hz);
         ASSERT_GT(values.size(), static_cast<std::size_t>(4.0 * nominal_hz * relative) - 4);
-        EXPECT_LT(worst_deviation(values, 230.0 * level), 0.0002 * 230.0) << nominal_hz * relative << " Hz, " << level;
+        EXPECT_LT(worst_deviation(values, 230.0 * level), 0.0002 * 230.0)
+            << nominal_hz * relative << " Hz, " << level;
       }
     }
   }
@@ -65,8 +67,8 @@ struct Distorted {
   double expected_v;
 };
 
-// Expected values: sqrt of the sum of squares (elementary); the first two are rows of IEC 62586-2-style recipe tables
-// computed independently.
+// Expected values: sqrt of the sum of squares (elementary); the first two are rows of IEC 62586-2-style
+// recipe tables computed independently.
 TEST(HalfCycleRms, HarmonicsAndDirectVoltageAddAsSquaresAndAddNoCrossings) {
   const Distorted cases[] = {
       {"10 % third", {{3, 0.10}}, 0.0, 231.147},
@@ -124,7 +126,10 @@ TEST(HalfCycleRms, NoiseWithoutMainsSetsNoCrossings) {
 
 // A waveform that jumps by 60 degrees, as in a fault of the network: a sound r.m.s. goes on.
 TEST(HalfCycleRms, AJumpInPhaseLeavesTheValuesWhole) {
-  const auto jumping = [](double t) { return sine(230.0, 50.0, [](double) { return 1.0; }, t < 1.0 ? 0.0 : 60.0)(t); };
+  const auto jumping = [](double t) {
+    return sine(
+        230.0, 50.0, [](double) { return 1.0; }, t < 1.0 ? 0.0 : 60.0)(t);
+  };
   const auto values = half_cycles(sampled(jumping, 2.0));
   for (const auto& value : values) {
     const double from_jump = value.begin / kRate - 1.0;
@@ -163,7 +168,8 @@ TEST(HalfCycleRms, SamplesAtTheSensorsLimitMarkTheWindowsThatHoldThem) {
   meter.over_range(1000, 1003);
   const auto volts = sampled(sine(230.0, 50.0), 0.5);
   meter.feed(volts, values, ticks);
-  for (const auto& value : values) EXPECT_EQ(value.over_range, value.begin < 1003.0 && value.end > 1000.0);
+  for (const auto& value : values)
+    EXPECT_EQ(value.over_range, value.begin < 1003.0 && value.end > 1000.0);
   EXPECT_EQ(std::count_if(values.begin(), values.end(), [](const auto& v) { return v.over_range; }), 2);
 }
 

@@ -33,22 +33,27 @@ std::string every_bit_of(const MeterOutput& out) {
     text += '\n';
   };
   for (const HalfCycle& h : out.half_cycles) {
-    put(h.channel_index, h.value.begin, h.value.end, h.value.u_rms_v, h.value.free_running, h.begin.value, h.window_ns);
+    put(h.channel_index, h.value.begin, h.value.end, h.value.u_rms_v, h.value.free_running, h.begin.value,
+        h.window_ns);
   }
   for (const EventMark& m : out.events) {
-    put(m.after, m.ended, m.begin, m.end, static_cast<int>(m.event.kind), m.event.extreme_v, m.event.duration_ns, m.event.phases);
+    put(m.after, m.ended, m.begin, m.end, static_cast<int>(m.event.kind), m.event.extreme_v,
+        m.event.duration_ns, m.event.phases);
   }
   for (const auto& a : records_of<storage::Aggregate>(out)) {
-    put(static_cast<int>(a.interval), static_cast<int>(a.channel.side), a.begin.value, a.end.value, a.u_rms_v, a.u_min_v, a.u_max_v,
-        a.blocks, a.measured_ns, a.flagged, a.partial);
+    put(static_cast<int>(a.interval), static_cast<int>(a.channel.side), a.begin.value, a.end.value, a.u_rms_v,
+        a.u_min_v, a.u_max_v, a.blocks, a.measured_ns, a.flagged, a.partial);
   }
-  for (const auto& f : records_of<storage::Frequency>(out)) put(f.begin.value, f.hz, f.cycles, f.trusted, f.flagged);
-  for (const auto& c : records_of<storage::CoverageProgress>(out)) put(c.until.value, c.measured_ns);
+  for (const auto& f : records_of<storage::Frequency>(out))
+    put(f.begin.value, f.hz, f.cycles, f.trusted, f.flagged);
+  for (const auto& c : records_of<storage::CoverageProgress>(out))
+    put(c.until.value, c.measured_ns);
   for (const auto& w : records_of<storage::Waveform>(out)) {
     put(w.begin_sample.value, w.begin.value, w.end.value);
     for (const auto& trace : w.traces) {
       put(trace.volts_per_step, trace.steps.size());
-      for (const std::int16_t step : trace.steps) put(step);
+      for (const std::int16_t step : trace.steps)
+        put(step);
     }
   }
   return text;
@@ -78,11 +83,13 @@ TEST(Meter, GivesTheSameRecordsForTheSameSamplesHoweverTheyAreCut) {
   const auto channels = eventful();
   const config::Site site = site_of(kInputAndOutput);
   const UtcNs begin{kTenMinutesNs - 17 * kNsPerSecond};  // a ten-minute tick falls in
-  const std::string whole =
-      every_bit_of(metered(site, channels, [&] { return channels[0].size(); }, kRate, begin));
+  const std::string whole = every_bit_of(metered(
+      site, channels, [&] { return channels[0].size(); }, kRate, begin));
   EXPECT_GT(whole.size(), 10000U);
   for (const std::size_t cut : {7U, 64U, 1000U, 2049U}) {
-    EXPECT_EQ(whole, every_bit_of(metered(site, channels, [=] { return cut; }, kRate, begin))) << cut;
+    EXPECT_EQ(whole, every_bit_of(metered(
+                         site, channels, [=] { return cut; }, kRate, begin)))
+        << cut;
   }
   for (const unsigned seed : {1U, 2U, 3U, 4U, 5U}) {
     std::mt19937 random(seed);
@@ -91,13 +98,16 @@ TEST(Meter, GivesTheSameRecordsForTheSameSamplesHoweverTheyAreCut) {
   }
   const std::vector<std::vector<float>> head = {{channels[0].begin(), channels[0].begin() + 40000},
                                                 {channels[1].begin(), channels[1].begin() + 40000}};
-  EXPECT_EQ(every_bit_of(metered(site, head, [] { return std::size_t{1}; }, kRate, begin)),
-            every_bit_of(metered(site, head, [] { return std::size_t{40000}; }, kRate, begin)));
+  EXPECT_EQ(every_bit_of(metered(
+                site, head, [] { return std::size_t{1}; }, kRate, begin)),
+            every_bit_of(metered(
+                site, head, [] { return std::size_t{40000}; }, kRate, begin)));
 }
 
 TEST(Meter, AnEventAcrossATenMinuteTickAndMidnightIsOneEvent) {
   const UtcNs begin{86400 * kNsPerSecond - 2 * kNsPerSecond};
-  const auto out = metered(site_of(kOneInput), {sampled(sine(230.0, 50.0, between(1.0, 3.0, 0.5)), 5.0)}, kRate, begin);
+  const auto out =
+      metered(site_of(kOneInput), {sampled(sine(230.0, 50.0, between(1.0, 3.0, 0.5)), 5.0)}, kRate, begin);
   const auto events = ended_events(out);
   ASSERT_EQ(events.size(), 1U);
   EXPECT_NEAR(static_cast<double>(events[0].duration_ns) / 1e9, 2.0, 0.02);

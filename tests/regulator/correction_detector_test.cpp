@@ -47,10 +47,12 @@ double ramp(double t, double from_t, double from, double to, double pace) {
   return t <= from_t ? from : t >= from_t + lasting ? to : from + change * (t - from_t) / lasting;
 }
 
-// From 257.4 V to 225 V at S volts a second takes 32.4 V / S (elementary; handbook range of speeds, common practice).
+// From 257.4 V to 225 V at S volts a second takes 32.4 V / S (elementary; handbook range of speeds, common
+// practice).
 TEST(CorrectionDetector, AMoveAtConstantSpeedIsOneCorrectionWithThatSpeed) {
   for (const double speed : {8.0, 10.0, 20.0, 35.0, 50.0}) {
-    const auto result = seen([](double) { return 220.0; }, [&](double t) { return ramp(t, 2.0, 257.4, 225.0, speed); }, 10.0);
+    const auto result =
+        seen([](double) { return 220.0; }, [&](double t) { return ramp(t, 2.0, 257.4, 225.0, speed); }, 10.0);
     ASSERT_EQ(result.corrections.size(), 1U) << speed;
     const auto& c = result.corrections[0];
     EXPECT_NEAR(c.ratio_before, 1.17, 0.001);
@@ -61,13 +63,15 @@ TEST(CorrectionDetector, AMoveAtConstantSpeedIsOneCorrectionWithThatSpeed) {
 }
 
 TEST(CorrectionDetector, AStepOfTheLoadIsNoCorrection) {
-  const auto result = seen([](double) { return 220.0; }, [](double t) { return t < 2.0 ? 220.0 : 216.0; }, 5.0);
+  const auto result =
+      seen([](double) { return 220.0; }, [](double t) { return t < 2.0 ? 220.0 : 216.0; }, 5.0);
   EXPECT_TRUE(result.corrections.empty());
 }
 
 TEST(CorrectionDetector, ASupplyThatWandersUnderAStillServoIsNoCorrection) {
   const Volts input = [](double t) { return 200.0 + 15.0 * std::sin(t); };
-  const auto result = seen(input, [&](double t) { return 1.1 * input(t); }, 20.0);
+  const auto result = seen(
+      input, [&](double t) { return 1.1 * input(t); }, 20.0);
   EXPECT_TRUE(result.corrections.empty());
 }
 

@@ -51,9 +51,10 @@ inline measure::HalfCycle half_cycle(Side side, double t, double volts) {
   return h;
 }
 
-/// What the meter would give for these voltages: a value of each side each half cycle, and the events in them.
-inline measure::MeterOutput metered(const config::Site& site, const Volts& input, const Volts& output, double seconds,
-                                    double begin_s = 0.0) {
+/// What the meter would give for these voltages: a value of each side each half cycle, and the events in
+/// them.
+inline measure::MeterOutput metered(const config::Site& site, const Volts& input, const Volts& output,
+                                    double seconds, double begin_s = 0.0) {
   measure::MeterOutput out;
   std::vector<measure::EventDetector> detectors;
   for (const Side side : {Side::input, Side::output}) {
@@ -63,16 +64,18 @@ inline measure::MeterOutput metered(const config::Site& site, const Volts& input
     for (const Side side : {Side::input, Side::output}) {
       if (!site.has(side)) continue;
       out.half_cycles.push_back(half_cycle(side, t, side == Side::input ? input(t) : output(t)));
-      detectors[static_cast<std::size_t>(side)].take(out.half_cycles.back(), out.half_cycles.size() - 1, out.events);
+      detectors[static_cast<std::size_t>(side)].take(out.half_cycles.back(), out.half_cycles.size() - 1,
+                                                     out.events);
     }
   }
-  for (auto& detector : detectors) detector.close(storage::EventEnd::stopped, out.half_cycles.size() - 1, out.events);
+  for (auto& detector : detectors)
+    detector.close(storage::EventEnd::stopped, out.half_cycles.size() - 1, out.events);
   out.stretch_ends.push_back({out.half_cycles.size() - 1, storage::EventEnd::stopped});
   return out;
 }
 
-inline std::vector<storage::Record> watched(const config::Site& site, const Volts& input, const Volts& output, double seconds,
-                                            double begin_s = 0.0) {
+inline std::vector<storage::Record> watched(const config::Site& site, const Volts& input, const Volts& output,
+                                            double seconds, double begin_s = 0.0) {
   RegulatorWatch watch(site);
   std::vector<storage::Record> out;
   watch.take(metered(site, input, output, seconds, begin_s), out);
@@ -90,7 +93,8 @@ std::vector<R> records_of(const std::vector<storage::Record>& records) {
 }
 
 /// Events that have ended, of this kind and side.
-inline std::vector<storage::Event> ended(const std::vector<storage::Record>& records, storage::EventKind kind, Side side) {
+inline std::vector<storage::Event> ended(const std::vector<storage::Record>& records, storage::EventKind kind,
+                                         Side side) {
   auto events = records_of<storage::Event>(records);
   std::erase_if(events, [&](const storage::Event& e) {
     return e.kind != kind || e.side != side || e.end_reason == storage::EventEnd::open;

@@ -14,18 +14,22 @@ using storage::Origin;
 using namespace testing;
 using ::testing::Test;
 
-double step(double t, double at, double before, double after) { return t < at ? before : after; }
+double step(double t, double at, double before, double after) {
+  return t < at ? before : after;
+}
 
 // Ratio 220/188 = 1.17; a supply back at 220 V then gives about 257 V (common practice, no source).
 TEST(Origin, AServoStuckAt117WhileTheSupplyRecoversFrom188To220IsTheRegulators) {
   const auto site = site_215_225();
   const Volts input = [](double t) { return step(t, 10.0, 188.0, 220.0); };
-  const auto records = watched(site, input, [&](double t) { return 1.17 * input(t); }, 60.0);
+  const auto records = watched(
+      site, input, [&](double t) { return 1.17 * input(t); }, 60.0);
   const auto excursions = ended(records, EventKind::out_of_band, Side::output);
   ASSERT_EQ(excursions.size(), 1U);
   EXPECT_EQ(excursions[0].origin, Origin::regulator);
   EXPECT_NEAR(excursions[0].extreme_v, 257.4, 0.1);
-  EXPECT_NE(excursions[0].reason.find("the supply stood at 220 V"), std::string::npos) << excursions[0].reason;
+  EXPECT_NE(excursions[0].reason.find("the supply stood at 220 V"), std::string::npos)
+      << excursions[0].reason;
   EXPECT_NE(excursions[0].reason.find("the ratio stayed at 1.17"), std::string::npos) << excursions[0].reason;
   const auto swells = ended(records, EventKind::swell, Side::output);
   ASSERT_EQ(swells.size(), 1U);
@@ -49,7 +53,8 @@ TEST(Origin, ADeepShortSagThatNoServoOfThisSpeedCouldFollowIsTheSupplys) {
   const auto records = watched(site, input, sound_servo(site, input, 30.0, 20.0), 30.0);
   const auto excursions = ended(records, EventKind::out_of_band, Side::output);
   ASSERT_GE(excursions.size(), 1U);
-  for (const auto& e : excursions) EXPECT_EQ(e.origin, Origin::supply) << e.reason;
+  for (const auto& e : excursions)
+    EXPECT_EQ(e.origin, Origin::supply) << e.reason;
 }
 
 TEST(Origin, AnInterruptionOfBothSidesIsTheSupplys) {
@@ -64,17 +69,20 @@ TEST(Origin, AnInterruptionOfBothSidesIsTheSupplys) {
 
 TEST(Origin, AnOutputLostWithAHealthyInputIsTheRegulatorsOrWhatLiesBetweenTheSensors) {
   const auto site = site_215_225();
-  const auto records = watched(site, [](double) { return 220.0; }, [](double t) { return t >= 10.0 && t < 15.0 ? 0.5 : 220.0; }, 30.0);
+  const auto records = watched(
+      site, [](double) { return 220.0; }, [](double t) { return t >= 10.0 && t < 15.0 ? 0.5 : 220.0; }, 30.0);
   const auto interruptions = ended(records, EventKind::interruption, Side::output);
   ASSERT_EQ(interruptions.size(), 1U);
   EXPECT_EQ(interruptions[0].origin, Origin::regulator);
-  EXPECT_NE(interruptions[0].reason.find("between the two sensors"), std::string::npos) << interruptions[0].reason;
+  EXPECT_NE(interruptions[0].reason.find("between the two sensors"), std::string::npos)
+      << interruptions[0].reason;
 }
 
 TEST(Origin, WithoutAnInputSensorItIsUndecidedAndSaysWhy) {
   auto site = site_215_225();
   site.channels.erase(site.channels.begin());
-  const auto records = watched(site, nullptr, [](double t) { return t > 10.0 ? 240.0 : 220.0; }, 30.0);
+  const auto records = watched(
+      site, nullptr, [](double t) { return t > 10.0 ? 240.0 : 220.0; }, 30.0);
   const auto excursions = ended(records, EventKind::out_of_band, Side::output);
   ASSERT_EQ(excursions.size(), 1U);
   EXPECT_EQ(excursions[0].origin, Origin::undecided);
@@ -84,7 +92,8 @@ TEST(Origin, WithoutAnInputSensorItIsUndecidedAndSaysWhy) {
 TEST(RegulatorWatch, AnInputSagThatTheOutputDidNotShowIsHeldOff) {
   const auto site = site_215_225();
   const Volts input = [](double t) { return t >= 10.0 && t < 20.0 ? 190.0 : 220.0; };
-  const auto held = watched(site, input, [](double) { return 220.0; }, 30.0);
+  const auto held = watched(
+      site, input, [](double) { return 220.0; }, 30.0);
   const auto sags = ended(held, EventKind::sag, Side::input);
   ASSERT_EQ(sags.size(), 1U);
   ASSERT_TRUE(sags[0].held_off.has_value());
@@ -97,7 +106,9 @@ TEST(RegulatorWatch, AnInputSagThatTheOutputDidNotShowIsHeldOff) {
 
 TEST(RegulatorWatch, AnOutputThatLeavesTheBandForLessThanTheGraceIsNoExcursion) {
   const auto site = site_215_225();
-  const auto output = [](double seconds) { return [=](double t) { return t >= 10.0 && t < 10.0 + seconds ? 213.0 : 220.0; }; };
+  const auto output = [](double seconds) {
+    return [=](double t) { return t >= 10.0 && t < 10.0 + seconds ? 213.0 : 220.0; };
+  };
   const Volts input = [](double) { return 220.0; };
   EXPECT_EQ(ended(watched(site, input, output(0.9), 30.0), EventKind::out_of_band, Side::output).size(), 0U);
   EXPECT_EQ(ended(watched(site, input, output(1.2), 30.0), EventKind::out_of_band, Side::output).size(), 1U);
@@ -127,7 +138,8 @@ TEST(RegulatorWatch, ABareSupplyCountsItsInputAgainstTheEventThresholds) {
   auto site = site_215_225();
   site.regulator.reset();
   site.channels.pop_back();
-  const auto records = watched(site, [](double t) { return t < 100.0 ? 150.0 : 220.0; }, nullptr, 599.9);
+  const auto records = watched(
+      site, [](double t) { return t < 100.0 ? 150.0 : 220.0; }, nullptr, 599.9);
   const auto intervals = records_of<storage::RegulatorInterval>(records);
   ASSERT_EQ(intervals.size(), 1U);
   EXPECT_NEAR(static_cast<double>(intervals[0].input_in_band), 49990, 2);

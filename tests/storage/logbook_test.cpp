@@ -24,7 +24,8 @@ class Logbook : public ::testing::Test {
  protected:
   Logbook() {
     const auto* test = ::testing::UnitTest::GetInstance()->current_test_info();
-    folder_ = fs::path(::testing::TempDir()) / (std::string("tramline-") + test->test_suite_name() + "-" + test->name());
+    folder_ = fs::path(::testing::TempDir()) /
+              (std::string("tramline-") + test->test_suite_name() + "-" + test->name());
     fs::remove_all(folder_);
     fs::create_directories(folder_);
     path_ = (folder_ / "site.logbook").string();
@@ -49,7 +50,8 @@ class Logbook : public ::testing::Test {
     sqlite3* database = nullptr;
     sqlite3_open(path_.c_str(), &database);
     char* message = nullptr;
-    if (sqlite3_exec(database, text.c_str(), nullptr, nullptr, &message) != SQLITE_OK) ADD_FAILURE() << message;
+    if (sqlite3_exec(database, text.c_str(), nullptr, nullptr, &message) != SQLITE_OK)
+      ADD_FAILURE() << message;
     sqlite3_close(database);
   }
   void bytes(const std::string& content) { std::ofstream(path_, std::ios::binary) << content; }
@@ -64,7 +66,9 @@ void write(LogbookWriter& writer, std::vector<Record> records) {
   EXPECT_TRUE(records.empty());
 }
 
-std::vector<Record> session() { return {SessionBegin{"test 1", "a source", 6400.0, true, UtcNs{0}}, CoverageBegin{{0}, {0}, "test began"}}; }
+std::vector<Record> session() {
+  return {SessionBegin{"test 1", "a source", 6400.0, true, UtcNs{0}}, CoverageBegin{{0}, {0}, "test began"}};
+}
 
 Event sag(std::int64_t begin_s, EventEnd end = EventEnd::recovered) {
   Event event;
@@ -175,14 +179,16 @@ TEST_F(Logbook, EveryOtherKindOfRecordComesBackAsWell) {
   interval.ratio_mean = 1.17;
   interval.corrections = 3;
   interval.travel = 0.25;
-  write(to, {interval, Correction{Phase::l1, {64}, {10}, {20}, 1.0, 1.17, 20.0}, Frequency{{0}, {10 * kSecond}, 49.98, 499, false, true, {}},
-             ClockChange{{7}, "the clock was set", -3, {true, 5}}, Loss{{8}, "aggregates dropped", 4}, SettingsInForce{{0}, "site: {}"},
-             CoverageProgress{{60 * kSecond}, 60 * kSecond}});
+  write(to, {interval, Correction{Phase::l1, {64}, {10}, {20}, 1.0, 1.17, 20.0},
+             Frequency{{0}, {10 * kSecond}, 49.98, 499, false, true, {}},
+             ClockChange{{7}, "the clock was set", -3, {true, 5}}, Loss{{8}, "aggregates dropped", 4},
+             SettingsInForce{{0}, "site: {}"}, CoverageProgress{{60 * kSecond}, 60 * kSecond}});
   Waveform waveform;
   waveform.begin = {100};
   waveform.end = {200};
   waveform.rate_hz = 6400.0;
-  waveform.traces = {{{Side::input, Phase::l1}, 0.01F, {-32767, 0, 1, 32767}}, {{Side::output, Phase::l1}, 0.02F, {1, 2, 3, -4}}};
+  waveform.traces = {{{Side::input, Phase::l1}, 0.01F, {-32767, 0, 1, 32767}},
+                     {{Side::output, Phase::l1}, 0.02F, {1, 2, 3, -4}}};
   write(to, {waveform, CoverageEnd{{90 * kSecond}, 90 * kSecond, "stopped"}, SessionEnd{"stopped"}});
 
   const auto from = reader();
@@ -224,7 +230,8 @@ TEST_F(Logbook, ACopyTakenWithoutNoticeHoldsTheBegunEventWhichTheNextStartCloses
   // What a power cut would leave: the files as they are, without the writer closing them.
   const fs::path copy = folder_ / "copy";
   fs::create_directories(copy);
-  for (const char* suffix : {"", "-wal"}) fs::copy_file(path_ + suffix, copy / (std::string("site.logbook") + suffix));
+  for (const char* suffix : {"", "-wal"})
+    fs::copy_file(path_ + suffix, copy / (std::string("site.logbook") + suffix));
   path_ = (copy / "site.logbook").string();
   auto next = writer();
   EXPECT_EQ(next.opening_remarks().size(), 2U);
@@ -287,7 +294,8 @@ TEST_F(Logbook, ADamagedLogbookIsSetAsideByTheDaemonAndRefusedOtherwise) {
   {
     auto to = writer();
     write(to, session());
-    for (int i = 0; i < 400; ++i) write(to, {sag(i)});
+    for (int i = 0; i < 400; ++i)
+      write(to, {sag(i)});
   }
   {
     std::fstream file(path_, std::ios::in | std::ios::out | std::ios::binary);
@@ -341,7 +349,8 @@ TEST_F(Logbook, OldDetailGoesByItsAgeAndTheLogbookSaysSo) {
   auto to = writer();
   write(to, session());
   for (std::int64_t day = 0; day < 20; ++day) {
-    write(to, {aggregate(Interval::three_seconds, day * 86400, 220.0), aggregate(Interval::ten_minutes, day * 86400, 220.0)});
+    write(to, {aggregate(Interval::three_seconds, day * 86400, 220.0),
+               aggregate(Interval::ten_minutes, day * 86400, 220.0)});
   }
   config::LogbookSettings settings;
   settings.keep_three_seconds_days = 5.0;
@@ -359,8 +368,10 @@ TEST_F(Logbook, TheSizeBudgetIsKeptByDroppingTheFinestDetailFirstAndNeverEvents)
   options.in_large_batches = true;
   auto to = writer(options);
   write(to, session());
-  for (std::int64_t i = 0; i < 20000; ++i) write(to, {aggregate(Interval::three_seconds, 3 * i, 220.0)});
-  for (std::int64_t i = 0; i < 2000; ++i) write(to, {aggregate(Interval::ten_minutes, 600 * i, 220.0), sag(i)});
+  for (std::int64_t i = 0; i < 20000; ++i)
+    write(to, {aggregate(Interval::three_seconds, 3 * i, 220.0)});
+  for (std::int64_t i = 0; i < 2000; ++i)
+    write(to, {aggregate(Interval::ten_minutes, 600 * i, 220.0), sag(i)});
   ASSERT_TRUE(to.flush());
   config::LogbookSettings settings;
   settings.keep_three_seconds_days = 0.0;
@@ -381,7 +392,8 @@ TEST_F(Logbook, MigrationsRunInOrderAndOnlyThoseMissing) {
   ASSERT_TRUE(opened);
   Database& database = opened.value();
   const std::array<Migration, 1> first = {{{"CREATE TABLE a(x INTEGER)"}}};
-  const std::array<Migration, 2> both = {{{"CREATE TABLE a(x INTEGER)"}, {"ALTER TABLE a ADD COLUMN y INTEGER"}}};
+  const std::array<Migration, 2> both = {
+      {{"CREATE TABLE a(x INTEGER)"}, {"ALTER TABLE a ADD COLUMN y INTEGER"}}};
   ASSERT_TRUE(migrate(database, first));
   ASSERT_TRUE(database.execute("INSERT INTO a VALUES(5)"));
   ASSERT_TRUE(migrate(database, both));

@@ -31,7 +31,8 @@ TEST(AxisTicks, AreRoundFiguresWithinTheRange) {
 
 TEST(Paragraph, LinesBreakAtSpacesAndAreIndented) {
   std::string words;
-  for (int i = 0; i < 40; ++i) words += "word ";
+  for (int i = 0; i < 40; ++i)
+    words += "word ";
   const std::string out = indented(words, 3);
   std::size_t begin = 0;
   std::size_t lines = 0;

@@ -8,10 +8,10 @@
 namespace tramline::tools {
 namespace {
 
-using ::testing::HasSubstr;
-using ::testing::Not;
 using storage::EventKind;
 using storage::Origin;
+using ::testing::HasSubstr;
+using ::testing::Not;
 
 constexpr std::int64_t kHourNs = 3600 * kNsPerSecond;
 
@@ -125,7 +125,8 @@ TEST(Verdict, GapsAreCountedAndNeverTakenForGoodTime) {
   EXPECT_EQ(figures.measured_ns, 3 * kHourNs);
   EXPECT_EQ(figures.gaps, 2);
   EXPECT_EQ(figures.longest_gap_ns, 2 * kHourNs);
-  EXPECT_THAT(verdict_text(evidence, figures), HasSubstr("Measured: 3 h of 5 h (60.00 %), with 2 gaps, the longest 2 h"));
+  EXPECT_THAT(verdict_text(evidence, figures),
+              HasSubstr("Measured: 3 h of 5 h (60.00 %), with 2 gaps, the longest 2 h"));
 }
 
 TEST(Verdict, APeriodAskedForWithoutAnyMeasuringSaysSo) {
