@@ -75,6 +75,12 @@ RecordQueue::Batch RecordQueue::take(std::chrono::milliseconds patience) {
   return batch;
 }
 
+bool RecordQueue::crowded() {
+  const std::lock_guard lock(mutex_);
+  return 2 * events_.size() > limits_.events || 2 * details_.size() > limits_.details ||
+         2 * waveform_bytes_ > limits_.waveform_bytes;
+}
+
 void RecordQueue::close() {
   {
     const std::lock_guard lock(mutex_);

@@ -41,6 +41,9 @@ class RecordQueue {
 
   void close();
 
+  /// Whether either lane is more than half full. A source that can wait, such as a recording, waits then.
+  [[nodiscard]] bool crowded();
+
  private:
   Limits limits_;
   std::mutex mutex_;

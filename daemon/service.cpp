@@ -14,6 +14,7 @@ namespace tramline {
 namespace {
 
 constexpr std::chrono::milliseconds kBlockEvery(40);
+constexpr std::chrono::milliseconds kWaitForDisk(20);
 constexpr std::size_t kMostFrames = 16384;
 constexpr std::chrono::seconds kLookAtClockEvery(10);
 constexpr std::chrono::seconds kFirstRetry(1);
@@ -51,6 +52,10 @@ ServiceExit Service::run() {
     log_->warn("{}", remark.text(file.file_name));
   site_ = std::make_unique<config::Site>(std::move(*file.site));
 
+  if (site_->logbook.path.empty()) {
+    log_->error("{}: the site file names no logbook; give logbook.path", site_file_);
+    return ServiceExit::wrong_input;
+  }
   storage::OpenOptions options;
   options.set_aside_damaged = true;
   options.now = now();
@@ -126,6 +131,10 @@ std::size_t Service::frames_due() const {
 }
 
 void Service::step() {
+  if (!real_time_ && queue_.crowded()) {
+    schedule(kWaitForDisk);
+    return;
+  }
   const std::size_t due = frames_due();
   if (due > 0) {
     auto more = source_->next(block_, due);

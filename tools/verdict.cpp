@@ -196,6 +196,11 @@ void put_coverage(const Evidence& evidence, const VerdictFigures& f, std::string
     fmt::format_to(std::back_inserter(out), ", with {} {}, the longest {}", f.gaps,
                    f.gaps == 1 ? "gap" : "gaps", format_duration(f.longest_gap_ns));
   out += ". What was not measured is in no figure above.\n";
+  if (evidence.from || evidence.to) {
+    out +=
+        "Shares, extremes and the servo's figures are those of the whole ten minutes that the period "
+        "touches.\n";
+  }
   if (evidence.records_lost > 0)
     fmt::format_to(std::back_inserter(out), "{} records were lost on the way to the logbook.\n",
                    evidence.records_lost);

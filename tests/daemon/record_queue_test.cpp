@@ -55,6 +55,18 @@ TEST(RecordQueue, AFullQueueDropsDetailsFirstAndCountsThem) {
   EXPECT_EQ(queue.take(kNoPatience).details_dropped, 0);
 }
 
+TEST(RecordQueue, IsCrowdedWhenALaneIsMoreThanHalfFull) {
+  RecordQueue queue({4, 2, 1000});
+  std::vector<Record> records = events(0, 2);
+  queue.put(records);
+  EXPECT_FALSE(queue.crowded());
+  records = events(2, 1);
+  queue.put(records);
+  EXPECT_TRUE(queue.crowded());
+  (void)queue.take(kNoPatience);
+  EXPECT_FALSE(queue.crowded());
+}
+
 TEST(RecordQueue, OfTooManyEventsTheNewestStay) {
   RecordQueue queue({4, 2, 1000});
   std::vector<Record> records = events(0, 10);
