@@ -78,16 +78,18 @@ Result<bool> LineReader::fill() {
   return got.value() > 0;
 }
 
+Error LineReader::too_long() const {
+  return {bytes_.path() + ":" + std::to_string(line_ + 1), "a line of more than 64 KiB",
+          "is this a text file?"};
+}
+
 Result<bool> LineReader::next(std::string_view& line) {
-  constexpr std::uint8_t kEndOfFile = 0x1a;
+  constexpr char kEndOfFile = 0x1a;
   while (!over_) {
     const auto* from = held_.data() + begin_;
     const auto* found = static_cast<const std::uint8_t*>(std::memchr(from, '\n', end_ - begin_));
     if (found == nullptr) {
-      if (end_ - begin_ > kLongestLine) {
-        return Error{bytes_.path() + ":" + std::to_string(line_ + 1), "a line of more than 64 KiB",
-                     "is this a text file?"};
-      }
+      if (end_ - begin_ > kLongestLine) return too_long();
       const auto more = fill();
       if (!more) return more.error();
       if (more.value()) continue;
@@ -98,10 +100,13 @@ Result<bool> LineReader::next(std::string_view& line) {
       found = held_.data() + end_;
     }
     line = std::string_view(reinterpret_cast<const char*>(from), static_cast<std::size_t>(found - from));
+    if (line.size() > kLongestLine) return too_long();
     begin_ = std::min(end_, static_cast<std::size_t>(found - held_.data()) + 1);
     ++line_;
-    if (!line.empty() && static_cast<std::uint8_t>(line.front()) == kEndOfFile) over_ = true;
-    if (over_ && !line.empty() && static_cast<std::uint8_t>(line.front()) == kEndOfFile) return false;
+    if (const std::size_t end = line.find(kEndOfFile); end != std::string_view::npos) {
+      line = line.substr(0, end);
+      over_ = ended_ = true;
+    }
     while (!line.empty() && (line.back() == '\r' || line.back() == ' '))
       line.remove_suffix(1);
     if (!line.empty()) return true;

@@ -63,6 +63,7 @@ class LineReader {
 
  private:
   [[nodiscard]] Result<bool> fill();
+  [[nodiscard]] Error too_long() const;
   ByteReader bytes_;
   std::vector<std::uint8_t> held_;
   std::size_t begin_ = 0;

@@ -19,6 +19,10 @@ using Data = ComtradeConfig::Data;
 
 constexpr double kSameRate = 0.05;  // sections whose rates differ by less are one stream
 constexpr std::uint32_t kNoStamp = 0xffffffff;
+constexpr std::int64_t kLatestStamp = 1'000'000'000'000'000'000;
+constexpr std::int64_t kHighestNumber = 1'000'000'000'000;
+constexpr std::size_t kFewUneven = 4;
+constexpr std::int64_t kAnchorEvery = 20000;  // rows, where the time stamps rule
 
 std::uint32_t u32(const std::uint8_t* b) {
   return static_cast<std::uint32_t>(b[0]) | static_cast<std::uint32_t>(b[1]) << 8U |
@@ -86,7 +90,8 @@ Result<bool> DataReader::next_text(DataRow& row) {
   if (!parse_integer(fields_[0], row.number))
     return Error{lines_.where(), "the sample number cannot be read", "the file is damaged"};
   std::int64_t stamp = 0;
-  row.stamp = parse_integer(fields_[1], stamp) ? std::optional(stamp) : std::nullopt;
+  row.stamp = parse_integer(fields_[1], stamp) && stamp >= 0 && stamp <= kLatestStamp ? std::optional(stamp)
+                                                                                      : std::nullopt;
   row.analog.resize(config_.analog.size());
   for (std::size_t i = 0; i < row.analog.size(); ++i) {
     double& value = row.analog[i];
@@ -101,7 +106,7 @@ Result<bool> DataReader::next_text(DataRow& row) {
 Result<bool> DataReader::next_binary(DataRow& row) {
   const auto got = lines_.read(record_);
   if (!got) return got.error();
-  torn_ = got.value() > 0 && got.value() < record_.size();
+  torn_ = torn_ || (got.value() > 0 && got.value() < record_.size());
   if (got.value() < record_.size()) return false;
   ++records_;
   row.number = u32(record_.data());
@@ -140,10 +145,12 @@ class ComtradeSource : public RowSource {
 
   [[nodiscard]] std::string end_remark() const override {
     std::string remark = "end of file";
-    const std::int64_t promised = config_.sections.empty() ? 0 : config_.sections.back().last;
-    if (last_number_ < promised) {
-      remark = "the data ends early: " + std::to_string(last_number_) + " of " + std::to_string(promised) +
-               " samples are there";
+    if (last_number_ < config_.samples) {
+      remark = "the data ends early: " + std::to_string(last_number_) + " of " +
+               std::to_string(config_.samples) + " samples are there";
+    } else if (last_number_ > config_.samples) {
+      remark += "; " + std::to_string(last_number_ - config_.samples) +
+                " samples more than its configuration promises are there";
     }
     if (data_.torn()) remark += ", the last one is cut short";
     if (missing_rows() - left_out_ > 0)
@@ -156,11 +163,11 @@ class ComtradeSource : public RowSource {
   Result<bool> read_row(Row& row) override;
 
  private:
-  void lay_out_sections();
+  Status lay_out_sections();
   Status look_at_stamps();
   Result<bool> next_data_row(DataRow& row);
   void place_by_section(Row& row, std::int64_t number);
-  void place_by_stamp(Row& row);
+  Status place_by_stamp(Row& row);
 
   /// A sampling section on the stream's own count of frames.
   struct Placed {
@@ -187,7 +194,10 @@ class ComtradeSource : public RowSource {
   DataRow data_row_;
   std::int64_t last_number_ = 0;
   std::int64_t last_index_ = -1;
+  std::int64_t number_base_ = 0;  // added to the file's own numbers: 1 where it counts from 0
+  std::int64_t first_stamp_ = 0;
   std::int64_t last_stamp_ = 0;
+  std::int64_t anchored_at_ = 0;
   double stamp_ns_ = 1000.0;
   std::int64_t left_out_ = 0;
   std::optional<std::size_t> anchored_section_;
@@ -215,8 +225,8 @@ Status ComtradeSource::start(const config::RecordingSettings& settings) {
   stamp_ns_ = (config_.nanosecond_stamps ? 1.0 : 1000.0) * config_.stamp_multiplier;
   if (config_.sections.empty()) {
     if (auto seen = look_at_stamps(); !seen) return seen;
-  } else {
-    lay_out_sections();
+  } else if (auto laid = lay_out_sections(); !laid) {
+    return laid;
   }
   if (auto sound = check_rate(info_.rate_hz, path_); !sound) return sound;
 
@@ -242,7 +252,7 @@ Status ComtradeSource::start(const config::RecordingSettings& settings) {
   return kDone;
 }
 
-void ComtradeSource::lay_out_sections() {
+Status ComtradeSource::lay_out_sections() {
   // The stream's rate is that of the longest stretch of time sampled at one rate.
   double longest_s = 0.0;
   std::int64_t first = 1;
@@ -254,6 +264,7 @@ void ComtradeSource::lay_out_sections() {
     }
     first = section.last + 1;
   }
+  if (auto sound = check_rate(info_.rate_hz, path_); !sound) return sound;
   first = 1;
   double index = 0.0;
   double begin_s = 0.0;
@@ -267,6 +278,9 @@ void ComtradeSource::lay_out_sections() {
     index = used ? static_cast<double>(std::llround(index)) + rows
                  : index + rows / section.rate_hz * info_.rate_hz;
     begin_s += rows / section.rate_hz;
+    if (begin_s > kLongestRecording_s)
+      return Error{path_, "the sampling sections span more than twenty years",
+                   "the configuration is damaged"};
     if (!used) {
       ++left_out;
       left_out_s += rows / section.rate_hz;
@@ -281,6 +295,7 @@ void ComtradeSource::lay_out_sections() {
                   left_out, sections_.size(), left_out_s);
     info_.remarks.emplace_back(text);
   }
+  return kDone;
 }
 
 Status ComtradeSource::look_at_stamps() {
@@ -302,7 +317,23 @@ Status ComtradeSource::look_at_stamps() {
   std::nth_element(steps.begin(), steps.begin() + static_cast<std::ptrdiff_t>(steps.size() / 2), steps.end());
   const std::int64_t usual = steps[steps.size() / 2];
   if (usual <= 0) return Error{path_, "the time stamps do not advance", "the file is damaged"};
-  info_.rate_hz = 1e9 / (static_cast<double>(usual) * stamp_ns_);
+  // Stamps are rounded to a whole microsecond; over many rows that averages out, with the gaps left out.
+  double sum = 0.0;
+  std::size_t count = 0;
+  std::size_t uneven = 0;
+  for (const std::int64_t step : steps) {
+    if (step > usual / 2 && 2 * step < 3 * usual) {
+      sum += static_cast<double>(step);
+      ++count;
+    } else if (step > 0 && 2 * step < 5 * usual) {
+      ++uneven;
+    }
+  }
+  if (uneven > kFewUneven + steps.size() / 10)
+    return Error{path_, "the time stamps step unevenly, so that lost samples cannot be told from rounding",
+                 "a configuration with a sample rate can be read"};
+  info_.rate_hz = static_cast<double>(count) / sum * 1e9 / stamp_ns_;
+  first_stamp_ = *ahead_.front().stamp;
   return kDone;
 }
 
@@ -319,7 +350,9 @@ Result<bool> ComtradeSource::read_row(Row& row) {
   const auto more = next_data_row(data_row_);
   if (!more) broken_ = more.error();
   if (!more || !more.value()) return more;
-  if (data_row_.number <= last_number_) {
+  if (last_number_ == 0 && data_row_.number == 0) number_base_ = 1;
+  data_row_.number += number_base_;
+  if (data_row_.number <= last_number_ || data_row_.number > kHighestNumber) {
     broken_ =
         Error{path_ + ", sample " + std::to_string(data_row_.number),
               "the sample numbers do not rise (the one before was " + std::to_string(last_number_) + ")",
@@ -338,7 +371,10 @@ Result<bool> ComtradeSource::read_row(Row& row) {
     row.at_limit[c] = config_.data == Data::binary16 && std::abs(raw) >= 32767.0;
   }
   if (config_.sections.empty()) {
-    place_by_stamp(row);
+    if (auto placed = place_by_stamp(row); !placed) {
+      broken_ = placed.error();
+      return *broken_;
+    }
   } else {
     place_by_section(row, data_row_.number);
   }
@@ -362,19 +398,33 @@ void ComtradeSource::place_by_section(Row& row, std::int64_t number) {
   }
 }
 
-void ComtradeSource::place_by_stamp(Row& row) {
-  const double interval = 1e9 / info_.rate_hz / stamp_ns_;
+Status ComtradeSource::place_by_stamp(Row& row) {
+  const auto fault = [this](const char* what) {
+    return Error{path_ + ", sample " + std::to_string(data_row_.number), what,
+                 "without a sample rate every sample needs its time"};
+  };
+  if (!data_row_.stamp) return fault("it bears no time stamp");
+  const double since_s = static_cast<double>(*data_row_.stamp - first_stamp_) * stamp_ns_ / 1e9;
+  if (since_s > kLongestRecording_s) return fault("the time stamp jumps by more than can be");
   std::int64_t advance = 1;
-  if (last_index_ >= 0 && data_row_.stamp) {
-    const double intervals = static_cast<double>(*data_row_.stamp - last_stamp_) / interval;
-    if (intervals > 1.5 && intervals < 1e12) {
-      advance = std::llround(intervals);
+  if (last_index_ >= 0) {
+    const double intervals =
+        static_cast<double>(*data_row_.stamp - last_stamp_) * stamp_ns_ / 1e9 * info_.rate_hz;
+    if (!(intervals > 0.0)) return fault("the time stamp does not advance");
+    if (intervals > 1.5) {
+      advance = std::max<std::int64_t>(2, std::llround(intervals));
       row.gap = measure::GapCause::time_jump;
     }
   }
   last_index_ = last_index_ < 0 ? 0 : last_index_ + advance;
-  if (data_row_.stamp) last_stamp_ = *data_row_.stamp;
+  last_stamp_ = *data_row_.stamp;
   row.index = last_index_;
+  if (advance > 1 || last_index_ - anchored_at_ >= kAnchorEvery) {
+    anchored_at_ = last_index_;
+    row.anchor =
+        measure::ClockAnchor{{last_index_}, info_.begin + std::llround(since_s * 1e9), info_.rate_hz};
+  }
+  return kDone;
 }
 
 /// The file beside `path` with this ending, whatever its letters' case.

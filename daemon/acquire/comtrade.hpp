@@ -37,6 +37,7 @@ struct ComtradeConfig {
   std::vector<Analog> analog;
   std::size_t status_channels = 0;
   std::vector<Section> sections;  ///< empty: the time stamps rule
+  std::int64_t samples = 0;       ///< as many rows should be there
   std::optional<UtcNs> begin;     ///< of the first sample; nothing if the stamp cannot be read
   bool zone_known = false;        ///< 2013: the offset from UTC is stated
   bool nanosecond_stamps = false;

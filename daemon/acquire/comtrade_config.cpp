@@ -13,6 +13,7 @@ namespace {
 
 constexpr std::int64_t kMostChannels = 10000;
 constexpr std::int64_t kMostSections = 100000;
+constexpr std::int64_t kMostSamples = 1'000'000'000'000;
 
 /// The fields of the configuration's lines, one line after the other.
 class ConfigLines {
@@ -171,10 +172,13 @@ Status read_sections(ConfigLines& in, ComtradeConfig& config) {
     ComtradeConfig::Section section;
     if (!parse_number(in.field(0), section.rate_hz) || !parse_integer(in.field(1), section.last))
       return in.error("a sample rate or its last sample cannot be read", "such as 6400,1280");
+    config.samples = section.last;
     if (count == 0) break;
     if (!(section.rate_hz > 0.0) || section.rate_hz > kHighestRate_hz) {
       return in.error("a sample rate of " + std::string(in.field(0)) + " Hz", "up to 1 MHz can be measured");
     }
+    if (section.last > kMostSamples)
+      return in.error(std::string(in.field(1)) + " samples", "10^12 at most are read");
     if (section.last <= last)
       return in.error("a section ends before it begins", "the numbers of the last samples must rise");
     last = section.last;

@@ -16,6 +16,7 @@ namespace {
 
 constexpr std::size_t kRowsToLookAt = 2000;
 constexpr double kEpochSeconds = 1e8;
+constexpr std::size_t kFewUneven = 4;
 constexpr std::int64_t kAnchorEvery = 20000;  // rows
 
 /// How the table is written, seen from its first row.
@@ -230,14 +231,23 @@ Status CsvSource::look_at_times() {
   if (!(usual > 0.0))
     return Error{lines_.path(), "the time does not advance from row to row",
                  "the time column must be finer than the sampling interval"};
-  // Coarse stamps jitter; over many rows that averages out, with the gaps left out.
+  // Rounded stamps jitter; over many rows that averages out, with the gaps left out.
   double sum = 0.0;
   std::size_t count = 0;
+  std::size_t uneven = 0;
   for (const double step : steps) {
-    if (step > 0.0 && step < 1.5 * usual) {
+    if (step > 0.5 * usual && step < 1.5 * usual) {
       sum += step;
       ++count;
+    } else if (step > 0.0 && step < 2.5 * usual) {
+      ++uneven;
     }
+  }
+  if (uneven > kFewUneven + steps.size() / 10) {
+    return Error{
+        lines_.path(),
+        "the time steps unevenly from row to row, so that lost rows cannot be told from rounding",
+        "the time column must be finer than the sampling interval; or give the rate, and no time column"};
   }
   info_.rate_hz = static_cast<double>(count) / sum;
   first_s_ = last_s_ = times.front();
@@ -255,7 +265,8 @@ Status CsvSource::place(Row& row, std::string_view cell, std::int64_t line) {
   }
   std::int64_t advance = 1;
   if (intervals > 1.5) {
-    if (intervals > 1e12) return error_at(line, "the time jumps by more than can be", "the file is damaged");
+    if (time->seconds - first_s_ > kLongestRecording_s)
+      return error_at(line, "the time jumps by more than can be", "the file is damaged");
     advance = std::max<std::int64_t>(2, std::llround(intervals));
     row.gap = measure::GapCause::time_jump;
   }

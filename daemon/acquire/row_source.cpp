@@ -39,7 +39,8 @@ Result<bool> RowSource::next(measure::Block& block, std::size_t most_frames) {
       if (row_.anchor) anchor_ = row_.anchor;
       if (row_.missing || !finite(row_)) {
         ++missing_;
-        missing_before_ = true;
+        missing_before_ =
+            row_.gap == measure::GapCause::rate_change ? row_.gap : measure::GapCause::not_a_number;
         continue;
       }
     }
@@ -49,12 +50,12 @@ Result<bool> RowSource::next(measure::Block& block, std::size_t most_frames) {
     }
     if (frames == 0) {
       shape.first = {row_.index};
-      shape.gap = row_.index == expected_ ? measure::GapCause::none
-                  : missing_before_       ? measure::GapCause::not_a_number
-                                          : row_.gap;
+      shape.gap = row_.index == expected_                      ? measure::GapCause::none
+                  : missing_before_ != measure::GapCause::none ? missing_before_
+                                                               : row_.gap;
       if (anchor_) shape.anchor = moved(*anchor_, shape.first);
       anchor_.reset();
-      missing_before_ = false;
+      missing_before_ = measure::GapCause::none;
     }
     for (std::size_t c = 0; c < width; ++c) {
       const double volts = (row_.raw[c] + channels_[c].offset) * channels_[c].scale;

@@ -23,9 +23,10 @@ class RowSource : public Source {
     std::int64_t index = 0;  ///< number of the frame in the stream
     measure::GapCause gap =
         measure::GapCause::samples_lost;  ///< why frames before it are missing, if they are
-    bool missing = false;                 ///< it holds no number for a wanted channel
-    std::vector<double> raw;              ///< a wanted channel each
-    std::vector<bool> at_limit;           ///< empty, or whether the channel stands at the recorder's limit
+    bool missing = false;  ///< it holds no number for a wanted channel; or, with `gap` rate_change, its rate
+                           ///< cannot be measured
+    std::vector<double> raw;     ///< a wanted channel each
+    std::vector<bool> at_limit;  ///< empty, or whether the channel stands at the recorder's limit
     std::optional<measure::ClockAnchor> anchor;
   };
   explicit RowSource(const std::vector<config::ChannelSettings>& channels) : channels_(channels) {}
@@ -47,7 +48,8 @@ class RowSource : public Source {
   std::vector<float> rows_;  // interleaved volts of the block being filled
   std::int64_t expected_ = 0;
   std::int64_t missing_ = 0;
-  bool missing_before_ = false;
+  measure::GapCause missing_before_ =
+      measure::GapCause::none;                  // why rows just before are missing, if they are
   std::optional<measure::ClockAnchor> anchor_;  // of a row that was left out
 };
 

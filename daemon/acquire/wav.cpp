@@ -151,13 +151,12 @@ class WavSource : public Source {
       wanted.byte = columns[c] * sample_bytes;
       wanted.scale = static_cast<float>(channels[c].scale / scale);
       wanted.add = static_cast<float>(channels[c].offset * channels[c].scale);
-      // Half a step inside full scale, so that rounding cannot hide it; the offset moves the two ends apart.
-      wanted.low_v = static_cast<float>((channels[c].offset - top) * volts + 0.4 * volts / scale);
-      wanted.high_v = static_cast<float>((channels[c].offset + top) * volts - 0.4 * volts / scale);
-      if (channels[c].scale < 0.0) {
-        wanted.low_v = static_cast<float>((-channels[c].offset - top) * volts + 0.4 * volts / scale);
-        wanted.high_v = static_cast<float>((-channels[c].offset + top) * volts - 0.4 * volts / scale);
-      }
+      // Half a step inside full scale, or what float rounds if that is more, so that rounding cannot hide it.
+      const double inside = std::max(
+          0.4 / scale, 4.0 * std::numeric_limits<float>::epsilon() * (1.0 + std::abs(channels[c].offset)));
+      const double middle = channels[c].offset * channels[c].scale;
+      wanted.low_v = static_cast<float>(middle - (top - inside) * volts);
+      wanted.high_v = static_cast<float>(middle + (top - inside) * volts);
       if (channels[c].range_v > 0.0) {
         wanted.low_v = std::max(wanted.low_v, static_cast<float>(-channels[c].range_v));
         wanted.high_v = std::min(wanted.high_v, static_cast<float>(channels[c].range_v));
@@ -191,17 +190,18 @@ class WavSource : public Source {
       }
       const std::size_t frames = std::min(held_, most_frames);
       const std::uint8_t* from = bytes_.data() + used_ * format_.frame_bytes;
-      const std::size_t sound = decode(block, from, frames);
+      const std::size_t sound = format_.encoding == Encoding::float32 ? leading(from, frames, true) : frames;
       if (sound > 0) {
+        decode(block, from, sound);
         block.gap = missing_before_ ? measure::GapCause::not_a_number : measure::GapCause::none;
         missing_before_ = false;
         advance(sound);
         return true;
       }
-      // A frame that is no number: pass over it and those like it.
+      const std::size_t unsound = leading(from, frames, false);
       missing_before_ = true;
-      ++missing_;
-      advance(1);
+      missing_ += static_cast<std::int64_t>(unsound);
+      advance(unsound);
     }
   }
 
@@ -248,36 +248,32 @@ class WavSource : public Source {
     position_ += static_cast<std::int64_t>(frames);
   }
 
-  /// Decodes up to `frames` into `block`; gives how many there are before the first that is no number.
-  std::size_t decode(measure::Block& block, const std::uint8_t* from, std::size_t frames) {
-    for (;;) {
-      block.resize(wanted_.size(), frames);
-      block.begin({position_});
-      for (std::size_t c = 0; c < wanted_.size(); ++c) {
-        decode_(from + wanted_[c].byte, frames, format_.frame_bytes, wanted_[c].scale, wanted_[c].add,
-                block.channel(c).data());
-      }
-      if (format_.encoding != Encoding::float32) break;
-      const std::size_t sound = finite_frames(block);
-      if (sound == frames) break;
-      frames = sound;
-      if (frames == 0) return 0;
+  void decode(measure::Block& block, const std::uint8_t* from, std::size_t frames) const {
+    block.resize(wanted_.size(), frames);
+    block.begin({position_});
+    const bool look = may_touch_limit(from, frames);
+    for (std::size_t c = 0; c < wanted_.size(); ++c) {
+      decode_(from + wanted_[c].byte, frames, format_.frame_bytes, wanted_[c].scale, wanted_[c].add,
+              block.channel(c).data());
+      if (look) note_over_range(block, c);
     }
-    if (may_touch_limit(from, frames)) {
-      for (std::size_t c = 0; c < wanted_.size(); ++c)
-        note_over_range(block, c);
-    }
-    return frames;
   }
 
-  static std::size_t finite_frames(const measure::Block& block) {
-    std::size_t sound = block.frames();
-    for (std::size_t c = 0; c < block.channels(); ++c) {
-      const auto volts = block.channel(c).first(sound);
-      const auto bad = std::find_if(volts.begin(), volts.end(), [](float v) { return !std::isfinite(v); });
-      sound = static_cast<std::size_t>(bad - volts.begin());
-    }
-    return sound;
+  /// How many of the float frames are numbers in every wanted channel (or, if not `sound`, are not), up to
+  /// the first that differs. Goes frame by frame, so that a file of nothing but such changes is still passed
+  /// over in one go.
+  [[nodiscard]] std::size_t leading(const std::uint8_t* from, std::size_t frames, bool sound) const {
+    const auto is_sound = [this](const std::uint8_t* frame) {
+      return std::all_of(wanted_.begin(), wanted_.end(), [frame](const Wanted& wanted) {
+        float volts = 0.0F;
+        decode_float32(frame + wanted.byte, 1, 0, wanted.scale, wanted.add, &volts);
+        return std::isfinite(volts);
+      });
+    };
+    std::size_t count = 0;
+    while (count < frames && is_sound(from + count * format_.frame_bytes) == sound)
+      ++count;
+    return count;
   }
 
   /// false: surely no sample of these frames stands at a limit. Of 16-bit samples the extremes tell, and they
@@ -298,6 +294,11 @@ class WavSource : public Source {
   void note_over_range(measure::Block& block, std::size_t channel) const {
     const auto volts = block.channel(channel);
     const Wanted& wanted = wanted_[channel];
+    // This loop vectorises; only a block that touches a limit is looked at sample by sample.
+    int touches = 0;
+    for (const float v : volts)
+      touches |= static_cast<int>(v <= wanted.low_v) | static_cast<int>(v >= wanted.high_v);
+    if (touches == 0) return;
     for (std::size_t i = 0; i < volts.size(); ++i) {
       if (volts[i] > wanted.low_v && volts[i] < wanted.high_v) continue;
       auto& spans = block.over_range;

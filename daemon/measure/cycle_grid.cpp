@@ -57,7 +57,8 @@ void CycleGrid::finish(SamplePosition end, std::vector<GridTick>& out) {
   if (starting_) end_start(out);
   const bool to_the_last = past_count_ > 0 && past_[0].measured;
   const std::size_t before = out.size();
-  free_run_until(end + (kLatest - 0.5) * period_, out);
+  while (last_ + period_ / 2.0 <= end)
+    run_on(out);
   for (std::size_t i = before; i < out.size(); ++i)
     out[i].extended = to_the_last;
 }
@@ -100,18 +101,21 @@ void CycleGrid::free_run_until(SamplePosition limit, std::vector<GridTick>& out)
     if (limit <= origin_ + kLongestStart * nominal_period_) return;
     end_start(out);
   }
-  while (limit > last_ + (on_flywheel() ? 0.5 + kFlywheelReach : kLatest) * period_) {
-    last_ += period_ / 2.0;
-    last_rising_ = !last_rising_;
-    past_[1] = past_[0];
-    past_[0] = {last_, false, false, 0.0, 0.0};
-    past_count_ = std::min<std::size_t>(past_count_ + 1, 2);
-    gone_ = !seen_;
-    seen_ = false;
-    flywheel_ticks_ = std::min(flywheel_ticks_ + 1, kFlywheelTicks);
-    unbroken_ = 0;
-    out.push_back(free_running_tick());
-  }
+  while (limit > last_ + (on_flywheel() ? 0.5 + kFlywheelReach : kLatest) * period_)
+    run_on(out);
+}
+
+void CycleGrid::run_on(std::vector<GridTick>& out) {
+  last_ += period_ / 2.0;
+  last_rising_ = !last_rising_;
+  past_[1] = past_[0];
+  past_[0] = {last_, false, false, 0.0, 0.0};
+  past_count_ = std::min<std::size_t>(past_count_ + 1, 2);
+  gone_ = !seen_;
+  seen_ = false;
+  flywheel_ticks_ = std::min(flywheel_ticks_ + 1, kFlywheelTicks);
+  unbroken_ = 0;
+  out.push_back(free_running_tick());
 }
 
 void CycleGrid::take(const Crossing& crossing, std::vector<GridTick>& out) {

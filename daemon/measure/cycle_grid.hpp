@@ -53,6 +53,7 @@ class CycleGrid {
 
  private:
   void free_run_until(SamplePosition limit, std::vector<GridTick>& out);
+  void run_on(std::vector<GridTick>& out);  // one free-running tick
   void take(const Crossing& crossing, std::vector<GridTick>& out);
   void end_start(std::vector<GridTick>& out);
   /// Whether ticks stand where the last good period expects them, rather than at every crossing that comes.

@@ -160,6 +160,28 @@ TEST(HalfCycleRms, AShortRecordingIsMeasuredFromItsFirstCycleToItsLast) {
   EXPECT_LT(worst_deviation(values, 230.0), 0.02);
 }
 
+// Recordings end at any point of the wave; nothing is read or drawn beyond their last sample.
+TEST(HalfCycleRms, NoWindowReachesBeyondTheEndWhereverThatIs) {
+  for (const double hz : {42.5, 47.0, 50.0, 57.5}) {
+    for (double degrees = 0.0; degrees < 360.0; degrees += 15.0) {
+      const auto volts = sampled(sine(
+                                     23.0, hz, [](double) { return 1.0; }, degrees),
+                                 2.0);
+      HalfCycleRms meter(kRate, 50.0, 230.0, 0, 12800);
+      std::vector<HalfCycleValue> values;
+      std::vector<GridTick> ticks;
+      meter.restart({0});
+      meter.feed(volts, values, ticks);
+      meter.finish(values, ticks);
+      ASSERT_FALSE(values.empty());
+      EXPECT_LE(values.back().end, static_cast<double>(volts.size()));
+      EXPECT_GT(values.back().end, static_cast<double>(volts.size()) - 0.6 * kRate / hz);
+      for (const GridTick& tick : ticks)
+        EXPECT_LE(tick.at, static_cast<double>(volts.size()));
+    }
+  }
+}
+
 TEST(HalfCycleRms, SamplesAtTheSensorsLimitMarkTheWindowsThatHoldThem) {
   HalfCycleRms meter(kRate, 50.0, 230.0, 0, 4096);
   std::vector<HalfCycleValue> values;
