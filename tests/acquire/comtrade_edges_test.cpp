@@ -374,6 +374,21 @@ TEST(ComtradeEdges, WithoutRatesTheStampsRule) {
   }
 }
 
+TEST(ComtradeEdges, WithoutRatesStampsCountInNanosecondsWhereTheDateHasNineDecimalsAndByTheMultiplier) {
+  Cfg cfg;
+  cfg.head = "S,L,2013";
+  cfg.rates = {"0", "0,4"};
+  cfg.first = "01/12/2026,05:50:26.000000000";
+  cfg.rest = {"1", "0,0", "0,0"};
+  const std::string rows = "1,0,1,0\n2,156250,2,0\n3,312500,3,0\n4,468750,4,0\n";
+  const Pair nanoseconds(cfg.text(), rows);
+  EXPECT_NEAR(read_recording(nanoseconds.path, {wanted("1")}).info.rate_hz, 6400.0, 1e-6);
+  cfg.first = "01/12/2026,05:50:26.000000";
+  cfg.rest[0] = "0.01";
+  const Pair multiplied(cfg.text(), rows);
+  EXPECT_NEAR(read_recording(multiplied.path, {wanted("1")}).info.rate_hz, 640.0, 1e-6);
+}
+
 TEST(ComtradeEdges, WithoutRatesStampsThatGoBackAreNoPlainSailing) {
   Cfg cfg;
   cfg.rates = {"0", "0,8"};

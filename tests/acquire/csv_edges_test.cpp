@@ -64,6 +64,20 @@ TEST(CsvEdges, WithATimeColumnTheUnnamedChannelsAreThoseBesideIt) {
   EXPECT_FALSE(stream.info.dated) << "seconds from the begin are no date";
 }
 
+TEST(CsvEdges, AByteOrderMarkIsNoPartOfTheFirstName) {
+  const RecordingFolder folder;
+  const auto settings = at_rate(folder.write("a.csv", "\xEF\xBB\xBFu,v\n1,2\n"), 1000.0);
+  EXPECT_THAT(read_recording(settings, {wanted("u")}).volts[0], ElementsAre(1.0F));
+}
+
+TEST(CsvEdges, TimesMayHaveADecimalCommaToo) {
+  const RecordingFolder folder;
+  const Stream stream =
+      read_recording(folder.write("a.csv", "t;u\n0,000;1,5\n0,001;2,5\n0,002;3,5\n"), {wanted("u")});
+  EXPECT_THAT(stream.volts[0], ElementsAre(1.5F, 2.5F, 3.5F)) << stream.error;
+  EXPECT_NEAR(stream.info.rate_hz, 1000.0, 1e-6);
+}
+
 TEST(CsvEdges, LargeNumbersAreSecondsFrom1970) {
   const RecordingFolder folder;
   const Stream stream =
