@@ -43,6 +43,10 @@ GridModel::GridModel(const config::SimulatorSettings& settings, double nominal_v
       value += pct / 100.0 * std::sin(order * angle + std::numbers::pi);
     table_[i] = static_cast<float>(std::numbers::sqrt2 * value);
   }
+  double power = 1.0;
+  for (const auto& [order, pct] : grid_.harmonics_pct)
+    power += pct / 100.0 * pct / 100.0;
+  form_ = std::sqrt(power);
   for (const auto& happening : settings.script) {
     if (happening.what == What::level) {
       const double full = happening.at_s + happening.ramp_s;
@@ -130,15 +134,14 @@ void GridModel::apply_changes(std::size_t phase, float* volts) const {
 
 void GridModel::next(const std::array<float*, 3>& volts) {
   const double t_s = static_cast<double>(frame_) / rate_hz_;
-  // Placed a little ahead, since the angle asked for comes up to a cycle later.
-  while (!waiting_.empty() && waiting_.back().at_s < t_s + 0.1) {
+  const double end_s = t_s + static_cast<double>(kChunk) / rate_hz_;
+  while (!waiting_.empty() && waiting_.back().at_s < end_s) {
     place(waiting_.back());
     waiting_.pop_back();
   }
   std::erase_if(changes_, [this](const Change& change) { return change.end <= frame_; });
 
   const double step = frequency_hz(t_s) / rate_hz_;
-  const double end_s = t_s + static_cast<double>(kChunk) / rate_hz_;
   const double end_v = wandering_v(end_s);
   for (std::size_t p = 0; p < phases_; ++p) {
     const double from_v = volts_[p];

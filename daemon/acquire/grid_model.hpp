@@ -21,6 +21,9 @@ class GridModel {
   /// `nominal_v`: used where the settings give no voltage.
   GridModel(const config::SimulatorSettings& settings, double nominal_v, double nominal_hz, int phases);
 
+  /// R.m.s. voltage of a phase at the next frame, noise and scripted sags, swells and interruptions apart.
+  [[nodiscard]] double rms_v(std::size_t phase) const { return volts_[phase] * form_; }
+
   /// Makes the next kChunk frames of every phase; `volts[p]` has room for them.
   void next(const std::array<float*, 3>& volts);
 
@@ -49,6 +52,7 @@ class GridModel {
   double nominal_hz_;
   std::size_t phases_;
   config::GridSettings grid_;
+  double form_ = 1.0;         // r.m.s. with the harmonics, over that of the fundamental
   std::vector<float> table_;  // one cycle of fundamental and harmonics, 1 V r.m.s. of fundamental
   std::vector<config::ScriptedHappening> waiting_;  // not yet placed on the wave; the next one last
   std::vector<Change> changes_;                     // under way or about to begin

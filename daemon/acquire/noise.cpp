@@ -7,11 +7,13 @@ namespace tramline::acquire {
 
 WhiteNoise::WhiteNoise(std::uint64_t seed, double rms) : random_(seed), silent_(!(rms > 0.0)) {
   Random filling(seed ^ 0x6e6f697365U);
+  // Each value with its opposite, so that the noise has no mean.
   double power = 0.0;
-  for (float& value : table_) {
+  for (std::size_t i = 0; i < table_.size(); i += 2) {
     const double radius = std::sqrt(-2.0 * std::log(1.0 - filling.unit()));
-    value = static_cast<float>(radius * std::cos(2.0 * std::numbers::pi * filling.unit()));
-    power += static_cast<double>(value) * static_cast<double>(value);
+    table_[i] = static_cast<float>(radius * std::cos(2.0 * std::numbers::pi * filling.unit()));
+    table_[i + 1] = -table_[i];
+    power += 2.0 * static_cast<double>(table_[i]) * static_cast<double>(table_[i]);
   }
   const double scale = rms / std::sqrt(power / static_cast<double>(table_.size()));
   for (float& value : table_)

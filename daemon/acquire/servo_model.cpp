@@ -2,15 +2,15 @@
 
 #include <algorithm>
 #include <cmath>
+#include <iterator>
 
 namespace tramline::acquire {
 namespace {
 
 using What = config::ScriptedHappening::What;
 
-constexpr double kLatchWithin = 0.002;  // of ratio
-constexpr double kLeastMotor_v =
-    50.0;  // the mains feeds the motor; lowest usable input, common practice, no source
+constexpr double kLatchWithin = 0.002;     // of ratio
+constexpr double kLeastMotorVolts = 50.0;  // the mains feeds the motor; common practice, no source
 
 bool concerns_servo(What what) {
   return what != What::sag && what != What::swell && what != What::interruption && what != What::level;
@@ -34,7 +34,6 @@ ServoModel::ServoModel(const config::ServoSettings& servo,
 
 ServoModel::Faults ServoModel::faults_now() {
   Faults faults;
-  bool held_at_ratio = false;
   for (const auto& happening : script_) {
     if (t_s_ < happening.at_s) continue;
     if (happening.lasting_s > 0.0 && t_s_ >= happening.at_s + happening.lasting_s) continue;
@@ -43,7 +42,7 @@ ServoModel::Faults ServoModel::faults_now() {
         faults.stuck = true;
         break;
       case What::servo_stuck_at:
-        held_at_ratio = true;
+        faults.sticks_at = happening.ratio;
         latched_ = latched_ || std::abs(ratio_ - happening.ratio) <= kLatchWithin;
         break;
       case What::servo_slow:
@@ -68,7 +67,7 @@ ServoModel::Faults ServoModel::faults_now() {
         break;
     }
   }
-  if (!held_at_ratio) latched_ = false;
+  if (!faults.sticks_at) latched_ = false;
   faults.stuck = faults.stuck || latched_;
   return faults;
 }
@@ -105,9 +104,11 @@ void ServoModel::move(const Faults& faults, double input_v, double step_s) {
   } else {
     direction_ = 0;
   }
-  if (faults.stuck || input_v < kLeastMotor_v) return;
+  if (faults.stuck || input_v < kLeastMotorVolts) return;
   const double pace = servo_.speed_v_per_s / nominal_v_ * faults.speed;
-  ratio_ = std::clamp(ratio_ + direction_ * pace * step_s, servo_.ratio_min, servo_.ratio_max);
+  const double next = std::clamp(ratio_ + direction_ * pace * step_s, servo_.ratio_min, servo_.ratio_max);
+  latched_ = faults.sticks_at && (ratio_ - *faults.sticks_at) * (next - *faults.sticks_at) <= 0.0;
+  ratio_ = latched_ ? *faults.sticks_at : next;
 }
 
 }  // namespace tramline::acquire

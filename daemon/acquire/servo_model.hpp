@@ -1,6 +1,7 @@
 #pragma once
 
 #include <cstdint>
+#include <optional>
 #include <vector>
 
 #include "config/site.hpp"
@@ -11,6 +12,9 @@ namespace tramline::acquire {
 /// One phase of a servo regulator: a window comparator behind a first-order sensing filter drives a motor of
 /// constant speed, which turns the wiper between its end stops. Faults come by script. Steps in time; knows
 /// nothing of waveforms.
+///
+/// Hunting that lasts needs a motor that coasts across the whole band (speed times coast_s above its width);
+/// a slow filter alone overshoots a few times and then rests.
 class ServoModel {
  public:
   /// Settings complete: nothing in `servo` is left to the site. `nominal_v`: the input at which the speed is
@@ -31,6 +35,7 @@ class ServoModel {
   /// What the script does to the servo at this moment.
   struct Faults {
     bool stuck = false;
+    std::optional<double> sticks_at;  // the ratio it sticks at as soon as it is there
     bool reversed = false;
     bool open = false;
     double speed = 1.0;

@@ -3,7 +3,9 @@
 #include <algorithm>
 #include <array>
 #include <cmath>
+#include <iterator>
 #include <limits>
+#include <optional>
 #include <utility>
 #include <vector>
 
@@ -15,6 +17,8 @@ namespace tramline::acquire {
 namespace {
 
 constexpr std::size_t kChunk = GridModel::kChunk;
+constexpr std::size_t kServoStep = 8;  // frames: about a millisecond at the usual rates
+static_assert(kChunk % kServoStep == 0);
 
 /// The servo's settings with what they leave to the site filled in.
 config::ServoSettings complete(config::ServoSettings servo, const config::RegulatorSettings& regulator) {
@@ -29,28 +33,41 @@ config::ServoSettings complete(config::ServoSettings servo, const config::Regula
   return servo;
 }
 
-/// R.m.s. over the last cycle or so, a chunk at a time.
+/// What the script holds for the servo of one phase.
+std::vector<config::ScriptedHappening> script_of(const std::vector<config::ScriptedHappening>& script,
+                                                 Phase phase) {
+  std::vector<config::ScriptedHappening> own;
+  std::copy_if(script.begin(), script.end(), std::back_inserter(own), [phase](const auto& happening) {
+    const auto& phases = happening.phases;
+    return phases.empty() || std::find(phases.begin(), phases.end(), phase) != phases.end();
+  });
+  return own;
+}
+
+/// R.m.s. over the last cycle.
 class CycleRms {
  public:
   CycleRms(double rate_hz, double nominal_hz, double start_v)
-      : energies_(static_cast<std::size_t>(
-                      std::max(1L, std::lround(rate_hz / nominal_hz / static_cast<double>(kChunk)))),
-                  start_v * start_v * static_cast<double>(kChunk)) {}
+      : frames_(rate_hz / nominal_hz),
+        squares_(static_cast<std::size_t>(frames_) + 1, static_cast<float>(start_v * start_v)),
+        whole_(start_v * start_v * std::floor(frames_)) {}
+  /// With the next kServoStep samples.
   double take(const float* volts) {
-    float energy = 0.0F;
-    for (std::size_t i = 0; i < kChunk; ++i)
-      energy += volts[i] * volts[i];
-    energies_[next_] = static_cast<double>(energy);
-    next_ = (next_ + 1) % energies_.size();
-    double sum = 0.0;
-    for (const double e : energies_)
-      sum += e;
-    return std::sqrt(sum / static_cast<double>(energies_.size() * kChunk));
+    for (std::size_t i = 0; i < kServoStep; ++i) {
+      const float square = volts[i] * volts[i];
+      squares_[oldest_] = square;
+      oldest_ = oldest_ + 1 == squares_.size() ? 0 : oldest_ + 1;
+      whole_ += static_cast<double>(square) - static_cast<double>(squares_[oldest_]);
+    }
+    const double part = (frames_ - std::floor(frames_)) * static_cast<double>(squares_[oldest_]);
+    return std::sqrt(std::max(0.0, whole_ + part) / frames_);
   }
 
  private:
-  std::vector<double> energies_;
-  std::size_t next_ = 0;
+  double frames_;               // in a cycle
+  std::vector<float> squares_;  // the last ones; of the oldest the part counts that is still in the cycle
+  double whole_;                // sum of all but the oldest
+  std::size_t oldest_ = 0;
 };
 
 class Simulator : public Source {
@@ -64,14 +81,15 @@ class Simulator : public Source {
     info_.remarks.emplace_back("the samples are simulated: no supply was measured");
     if (settings.run_for_s > 0.0) info_.frames = std::llround(settings.run_for_s * settings.rate_hz);
 
-    const double input_v = settings.grid.voltage_v > 0.0 ? settings.grid.voltage_v : site.nominal_v;
     Random random(settings.seed ^ 0x736572766fU);
-    for (int p = 0; p < site.phases; ++p) {
+    for (std::size_t p = 0; p < static_cast<std::size_t>(site.phases); ++p) {
+      const double input_v = grid_.rms_v(p);
       PhaseState& phase = phases_.emplace_back(
           PhaseState{{}, {}, CycleRms(settings.rate_hz, site.nominal_hz, input_v), {}, 1.0});
       if (site.regulator) {
-        phase.servo.emplace(complete(settings.servo, *site.regulator), settings.script, site.nominal_v,
-                            input_v, random.next());
+        phase.servo.emplace(complete(settings.servo, *site.regulator),
+                            script_of(settings.script, static_cast<Phase>(p)), site.nominal_v, input_v,
+                            random.next());
         phase.gain = phase.servo->gain();
       }
     }
@@ -117,7 +135,7 @@ class Simulator : public Source {
     std::array<float, kChunk> output;
     CycleRms rms;
     std::optional<ServoModel> servo;
-    double gain;  // at the end of the chunk before
+    double gain;  // at the end of the step before
   };
   struct ChannelState {
     config::ChannelSettings settings;
@@ -155,12 +173,16 @@ class Simulator : public Source {
       phase.output = phase.input;
       return;
     }
-    phase.servo->advance(phase.rms.take(phase.input.data()), static_cast<double>(kChunk) / settings_.rate_hz);
-    const auto from = static_cast<float>(phase.gain);
-    phase.gain = phase.servo->gain();
-    const float by = (static_cast<float>(phase.gain) - from) / static_cast<float>(kChunk);
-    for (std::size_t i = 0; i < kChunk; ++i)
-      phase.output[i] = (from + by * static_cast<float>(i)) * phase.input[i];
+    for (std::size_t first = 0; first < kChunk; first += kServoStep) {
+      const float* input = phase.input.data() + first;
+      float* output = phase.output.data() + first;
+      phase.servo->advance(phase.rms.take(input), static_cast<double>(kServoStep) / settings_.rate_hz);
+      const auto from = static_cast<float>(phase.gain);
+      phase.gain = phase.servo->gain();
+      const float by = (static_cast<float>(phase.gain) - from) / static_cast<float>(kServoStep);
+      for (std::size_t i = 0; i < kServoStep; ++i)
+        output[i] = (from + by * static_cast<float>(i)) * input[i];
+    }
   }
 
   void note_over_range(measure::Block& block, std::size_t channel, std::size_t first,
@@ -169,7 +191,13 @@ class Simulator : public Source {
     if (!(limit > 0.0F)) return;
     const auto volts = block.channel(channel);
     for (std::size_t i = first; i < first + count; ++i) {
-      if (std::abs(volts[i]) >= limit) block.over_range.push_back({channel, i, 1});
+      if (std::abs(volts[i]) < limit) continue;
+      auto& spans = block.over_range;
+      if (!spans.empty() && spans.back().channel == channel &&
+          spans.back().first_frame + spans.back().frames == i)
+        ++spans.back().frames;
+      else
+        spans.push_back({channel, i, 1});
     }
   }
 
@@ -188,6 +216,11 @@ Result<std::unique_ptr<Source>> open_simulator(const config::SimulatorSettings& 
                                                const config::Site& site, UtcNs now) {
   if (!(settings.rate_hz > 0.0))
     return Error{"source.rate_hz", "the simulator has no sample rate", "give samples a second, such as 6400"};
+  for (const auto& channel : site.channels) {
+    if (static_cast<int>(channel.channel.phase) < site.phases) continue;
+    return Error{"channels", "a channel is on a phase that the site does not have",
+                 "set phases to 3 or leave the channel out"};
+  }
   return std::unique_ptr<Source>(std::make_unique<Simulator>(settings, site, now));
 }
 

@@ -111,15 +111,17 @@ void FundamentalCrossings::follow(const SampleHistory& history, std::vector<Cros
   for (; i < count; ++i)
     y[i] = filter_one(centre + i, taps_.data(), half);
 
-  // A crossing lies between rows j and j + 1; the cubic needs j - 1 … j + 2.
+  // A crossing lies between borders j and j + 1; the cubic needs j - 1 … j + 2.
   const std::int64_t end = filtered_.end() - 2;
-  for (; scanned_ < end; ++scanned_) {
-    const float* at = filtered_.at(scanned_);
-    const bool rising = at[0] < 0.0F && at[1] >= 0.0F;
-    const bool falling = at[0] >= 0.0F && at[1] < 0.0F;
-    if (!rising && !falling) continue;
+  if (scanned_ >= end) return;
+  const float* at = filtered_.at(scanned_);
+  bool negative = at[0] < 0.0F;
+  for (; scanned_ < end; ++scanned_, ++at) {
+    const bool next_negative = at[1] < 0.0F;
+    if (negative == next_negative) continue;
+    negative = next_negative;
     const Root root = root_of_cubic(at);
-    out.push_back({position_of(scanned_) + root.at * static_cast<double>(row_), rising,
+    out.push_back({position_of(scanned_) + root.at * static_cast<double>(row_), !next_negative,
                    std::abs(root.slope) / (radians_a_row_ * gain_)});
   }
 }

@@ -7,7 +7,9 @@ namespace tramline::measure {
 namespace {
 
 std::int64_t ns_after(double samples, double ns_a_sample) {
-  return std::llround(samples * ns_a_sample);
+  // As std::llround(), but in line: this is asked for each half cycle of each channel several times.
+  const double ns = samples * ns_a_sample;
+  return static_cast<std::int64_t>(ns < 0.0 ? ns - 0.5 : ns + 0.5);
 }
 
 }  // namespace

@@ -2,6 +2,7 @@
 
 #include <gtest/gtest.h>
 
+#include <algorithm>
 #include <cmath>
 #include <vector>
 
@@ -71,12 +72,23 @@ TEST(ServoModel, ARecoveringSupplyOvershootsForAsLongAsTheSpeedSays) {
     double speed_v_per_s, until_band_s, until_110_pct_s;
   };
   // Elementary: (257.4 - 225) / S and (257.4 - 242) / S.
-  for (const Row& row :
-       {Row{10, 3.24, 1.54}, Row{20, 1.62, 0.77}, Row{50, 0.648, 0.308}, Row{80, 0.405, 0.193}}) {
+  for (const Row& row : {Row{8, 4.05, 1.925}, Row{10, 3.24, 1.54}, Row{20, 1.62, 0.77}, Row{35, 0.926, 0.44},
+                         Row{50, 0.648, 0.308}, Row{80, 0.405, 0.193}, Row{100, 0.324, 0.154}}) {
     const auto result = run(servo_215_225(row.speed_v_per_s, 0.0), 188.0, 220.0, 6.0);
     EXPECT_NEAR(result.output_v[1000], 257.4, 0.3);
     EXPECT_NEAR(seconds_until_below(result, 225.0), row.until_band_s, 0.02) << row.speed_v_per_s;
     EXPECT_NEAR(seconds_until_below(result, 242.0), row.until_110_pct_s, 0.02) << row.speed_v_per_s;
+  }
+}
+
+// The wiper turns at one pace, so from 188 V to 215 V the output gains S times 188/220 volts a second.
+TEST(ServoModel, ALowInputIsLiftedMoreSlowlyThanTheStatedSpeed) {
+  for (const double speed_v_per_s : {10.0, 20.0, 50.0}) {
+    const auto result = run(servo_215_225(speed_v_per_s, 0.0), 220.0, 188.0, 6.0);
+    std::size_t i = 1000;
+    while (i < result.output_v.size() && result.output_v[i] < 214.99)
+      ++i;
+    EXPECT_NEAR(static_cast<double>(i - 1000) * kStep_s, 27.0 / (speed_v_per_s * 188.0 / 220.0), 0.005);
   }
 }
 
@@ -106,6 +118,7 @@ TEST(ServoModel, AFilterTooSlowForTheSpeedMakesItReverse) {
   const auto once = run(servo_215_225(40.0, 0.5), 188.0, 220.0, 10.0);
   EXPECT_EQ(once.reversals, 1);
   EXPECT_NEAR(once.output_v.back(), 219.38, 0.1);
+  // The motor runs three times: two reversals.
   EXPECT_EQ(run(servo_215_225(80.0, 1.0), 188.0, 220.0, 20.0).reversals, 2);
 }
 
@@ -126,6 +139,98 @@ TEST(ServoModel, AServoThatSticksAtARatioStopsThere) {
   stuck.ratio = 1.10;
   const auto result = run(servo_215_225(20.0, 0.0), 220.0, 188.0, 10.0, {stuck});
   EXPECT_NEAR(result.output_v.back() / 188.0, 1.10, 0.003);
+}
+
+TEST(ServoModel, AServoThatIsNearEnoughToTheRatioSticksWhereItIs) {
+  auto stuck = happening(What::servo_stuck_at, 0.0);
+  stuck.ratio = 0.9985;
+  const auto result = run(servo_215_225(20.0, 0.0), 220.0, 188.0, 10.0, {stuck});
+  EXPECT_NEAR(result.output_v.back(), 188.0, 1e-9);
+}
+
+TEST(ServoModel, AServoThatPassesARatioInOneStrideSticksThereToo) {
+  auto stuck = happening(What::servo_stuck_at, 0.0, 8.0);
+  stuck.ratio = 1.10;
+  ServoModel model(servo_215_225(80.0, 0.0), {stuck}, 220.0, 220.0, 1);
+  const double step_s = 0.02;  // 0.0073 of ratio
+  for (int i = 0; i < 350; ++i)
+    model.advance(188.0, step_s);
+  EXPECT_EQ(model.ratio(), 1.10);
+  for (int i = 0; i < 150; ++i)
+    model.advance(188.0, step_s);
+  EXPECT_GT(model.ratio() * 188.0, 215.0 - 2.0);  // freed
+}
+
+// 1.17 times 220 V: common practice, no source.
+TEST(ServoModel, AServoStuckAt117PercentMakesASwellOfARecoveringSupply) {
+  auto stuck = happening(What::servo_stuck_at, 0.0);
+  stuck.ratio = 1.17;
+  const auto result = run(servo_215_225(20.0, 0.05), 188.0, 220.0, 60.0, {stuck});
+  EXPECT_NEAR(result.output_v[500], 220.0, 0.1);
+  EXPECT_NEAR(result.output_v[1500], 257.4, 0.2);
+  EXPECT_NEAR(result.output_v.back(), 257.4, 0.2);
+}
+
+TEST(ServoModel, TheMotorCoastsOnForAsLongAsItIsToldTo) {
+  auto servo = servo_215_225(20.0, 0.0);
+  servo.coast_s = 0.2;
+  EXPECT_NEAR(run(servo, 188.0, 220.0, 6.0).output_v.back(), 225.0 - 20.0 * 0.2, 0.06);
+}
+
+// Overshoot beyond the band's width of 10 V by coasting alone lasts; by the filter alone it dies down.
+TEST(ServoModel, HuntingLastsWhereCoastingTakesItAcrossTheBand) {
+  auto servo = servo_215_225(40.0, 0.05);
+  EXPECT_EQ(run(servo, 188.0, 220.0, 60.0).reversals, 0);
+  servo.coast_s = 0.2;  // 8 V
+  const int few = run(servo, 188.0, 220.0, 60.0).reversals;
+  EXPECT_LE(few, 2);
+  servo.coast_s = 0.3;  // 12 V
+  EXPECT_GE(run(servo, 188.0, 220.0, 60.0).reversals, 59 * 4 / 10);
+  // A slower filter takes it further.
+  auto hunting = happening(What::servo_hunting, 0.0);
+  hunting.factor = 10.0;
+  const auto wide = run(servo, 188.0, 220.0, 60.0, {hunting});
+  EXPECT_GE(wide.reversals, 59 * 4 / 10);
+  EXPECT_GT(*std::max_element(wide.output_v.end() - 10000, wide.output_v.end()), 230.0);
+  EXPECT_LT(*std::min_element(wide.output_v.end() - 10000, wide.output_v.end()), 210.0);
+}
+
+TEST(ServoModel, WithoutASupplyTheMotorStands) {
+  const auto result = run(servo_215_225(20.0, 0.0), 220.0, 0.0, 6.0);
+  EXPECT_EQ(result.output_v.back(), 0.0);
+  EXPECT_EQ(result.reversals, 0);
+  ServoModel model(servo_215_225(20.0, 0.0), {}, 220.0, 200.0, 1);
+  const double before = model.ratio();
+  for (int i = 0; i < 5000; ++i)
+    model.advance(0.0, kStep_s);
+  EXPECT_EQ(model.ratio(), before);
+}
+
+TEST(ServoModel, TheLoadStepsToAndFroAtTimesOfTheSeed) {
+  auto servo = servo_215_225(20.0, 0.0);
+  servo.output_impedance_ohm = 0.2;
+  servo.load_a = 0.0;
+  servo.load_step_a = 5.0;
+  servo.load_step_every_s = 10.0;
+  const auto steps = [&servo](std::uint64_t seed) {
+    ServoModel model(servo, {}, 220.0, 220.0, seed);
+    std::vector<int> at;
+    double last = model.gain();
+    for (int i = 0; i < 2'000'000; ++i) {
+      model.advance(220.0, kStep_s);
+      const double now = model.gain();
+      if (now != last) {
+        at.push_back(i);
+        EXPECT_NEAR(std::abs(now - last), 1.0 - 1.0 / (1.0 + 0.2 * 5.0 / 220.0), 1e-9);
+      }
+      last = now;
+    }
+    return at;
+  };
+  const auto first = steps(1);
+  EXPECT_NEAR(static_cast<double>(first.size()), 200.0, 5.0 * std::sqrt(200.0));  // a Poisson process
+  EXPECT_EQ(steps(1), first);
+  EXPECT_NE(steps(2), first);
 }
 
 TEST(ServoModel, AReversedServoRunsToTheWrongStopAndASlowOneTakesLonger) {
