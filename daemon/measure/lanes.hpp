@@ -27,4 +27,11 @@ inline float sum_of(Lanes lanes) {
   return (lanes[0] + lanes[2]) + (lanes[1] + lanes[3]);
 }
 
+/// The four sums, each added up in the order of `sum_of()`.
+inline Lanes sums_of(Lanes a, Lanes b, Lanes c, Lanes d) {
+  const Lanes ab = __builtin_shufflevector(a, b, 0, 4, 1, 5) + __builtin_shufflevector(a, b, 2, 6, 3, 7);
+  const Lanes cd = __builtin_shufflevector(c, d, 0, 4, 1, 5) + __builtin_shufflevector(c, d, 2, 6, 3, 7);
+  return __builtin_shufflevector(ab, cd, 0, 1, 4, 5) + __builtin_shufflevector(ab, cd, 2, 3, 6, 7);
+}
+
 }  // namespace tramline::measure

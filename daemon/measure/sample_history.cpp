@@ -23,12 +23,45 @@ constexpr std::array<float, kRow> rising_weights() {
   return weights;
 }
 
+/// The sums over one row, still in lanes.
+struct RowLanes {
+  Lanes sum{};
+  Lanes rising{};
+  Lanes energy{};
+};
+template <std::size_t kRow>
+RowLanes add_up(const float* volts, const std::array<float, kRow>& weights) {
+  RowLanes row;
+  for (std::size_t i = 0; i < kRow; i += 4) {
+    const Lanes v = load(volts + i);
+    row.sum += v;
+    row.rising += load(weights.data() + i) * v;
+    row.energy += v * v;
+  }
+  return row;
+}
+
 /// Energies of the rows, and the decimated copy at the border before each; `rising` is carried from row to
-/// row.
+/// row. Four rows at a time share the adding up of their lanes; each is summed in the same order all the
+/// same.
 template <std::size_t kRow>
 void sum_rows(const float* volts, std::size_t rows, float* decimated, float* energies, float& rising) {
   static constexpr auto kWeights = rising_weights<kRow>();
-  for (std::size_t r = 0; r < rows; ++r, volts += kRow) {
+  std::size_t r = 0;
+  if constexpr (kRow >= 4) {
+    for (; r + 4 <= rows; r += 4, volts += 4 * kRow) {
+      const RowLanes a = add_up<kRow>(volts, kWeights);
+      const RowLanes b = add_up<kRow>(volts + kRow, kWeights);
+      const RowLanes c = add_up<kRow>(volts + 2 * kRow, kWeights);
+      const RowLanes d = add_up<kRow>(volts + 3 * kRow, kWeights);
+      const Lanes rise = sums_of(a.rising, b.rising, c.rising, d.rising);
+      const Lanes before = __builtin_shufflevector(all(rising), rise, 0, 4, 5, 6);
+      store(before + (sums_of(a.sum, b.sum, c.sum, d.sum) - rise), decimated + r);
+      store(sums_of(a.energy, b.energy, c.energy, d.energy), energies + r);
+      rising = rise[3];
+    }
+  }
+  for (; r < rows; ++r, volts += kRow) {
     float row_sum = 0.0F;
     float row_rising = 0.0F;
     if constexpr (kRow < 4) {
@@ -40,18 +73,10 @@ void sum_rows(const float* volts, std::size_t rows, float* decimated, float* ene
       }
       energies[r] = energy;
     } else {
-      Lanes sum{};
-      Lanes weighted{};
-      Lanes energy{};
-      for (std::size_t i = 0; i < kRow; i += 4) {
-        const Lanes v = load(volts + i);
-        sum += v;
-        weighted += load(kWeights.data() + i) * v;
-        energy += v * v;
-      }
-      row_sum = sum_of(sum);
-      row_rising = sum_of(weighted);
-      energies[r] = sum_of(energy);
+      const RowLanes row = add_up<kRow>(volts, kWeights);
+      row_sum = sum_of(row.sum);
+      row_rising = sum_of(row.rising);
+      energies[r] = sum_of(row.energy);
     }
     decimated[r] = rising + (row_sum - row_rising);
     rising = row_rising;
