@@ -278,7 +278,7 @@ Status ComtradeSource::lay_out_sections() {
     index = used ? static_cast<double>(std::llround(index)) + rows
                  : index + rows / section.rate_hz * info_.rate_hz;
     begin_s += rows / section.rate_hz;
-    if (begin_s > kLongestRecording_s)
+    if (begin_s > kLongestRecordingSeconds)
       return Error{path_, "the sampling sections span more than twenty years",
                    "the configuration is damaged"};
     if (!used) {
@@ -405,7 +405,7 @@ Status ComtradeSource::place_by_stamp(Row& row) {
   };
   if (!data_row_.stamp) return fault("it bears no time stamp");
   const double since_s = static_cast<double>(*data_row_.stamp - first_stamp_) * stamp_ns_ / 1e9;
-  if (since_s > kLongestRecording_s) return fault("the time stamp jumps by more than can be");
+  if (since_s > kLongestRecordingSeconds) return fault("the time stamp jumps by more than can be");
   std::int64_t advance = 1;
   if (last_index_ >= 0) {
     const double intervals =

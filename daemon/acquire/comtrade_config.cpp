@@ -174,7 +174,7 @@ Status read_sections(ConfigLines& in, ComtradeConfig& config) {
       return in.error("a sample rate or its last sample cannot be read", "such as 6400,1280");
     config.samples = section.last;
     if (count == 0) break;
-    if (!(section.rate_hz > 0.0) || section.rate_hz > kHighestRate_hz) {
+    if (!(section.rate_hz > 0.0) || section.rate_hz > kHighestRateHz) {
       return in.error("a sample rate of " + std::string(in.field(0)) + " Hz", "up to 1 MHz can be measured");
     }
     if (section.last > kMostSamples)

@@ -265,7 +265,7 @@ Status CsvSource::place(Row& row, std::string_view cell, std::int64_t line) {
   }
   std::int64_t advance = 1;
   if (intervals > 1.5) {
-    if (time->seconds - first_s_ > kLongestRecording_s)
+    if (time->seconds - first_s_ > kLongestRecordingSeconds)
       return error_at(line, "the time jumps by more than can be", "the file is damaged");
     advance = std::max<std::int64_t>(2, std::llround(intervals));
     row.gap = measure::GapCause::time_jump;

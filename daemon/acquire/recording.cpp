@@ -32,7 +32,7 @@ config::RecordingFormat format_of(const config::RecordingSettings& settings) {
 }  // namespace
 
 Status check_rate(double rate_hz, const std::string& where) {
-  if (rate_hz >= kLowestRate_hz && rate_hz <= kHighestRate_hz) return kDone;
+  if (rate_hz >= kLowestRateHz && rate_hz <= kHighestRateHz) return kDone;
   return Error{where, "a sample rate of " + std::to_string(rate_hz) + " Hz",
                "360 Hz to 1 MHz can be measured"};
 }

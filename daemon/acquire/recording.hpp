@@ -21,10 +21,10 @@ namespace tramline::acquire {
 
 /// The lowest and highest sample rates a recording may have: the measurement needs six samples a cycle at
 /// least.
-inline constexpr double kLowestRate_hz = 360.0;
-inline constexpr double kHighestRate_hz = 1.0e6;
+inline constexpr double kLowestRateHz = 360.0;
+inline constexpr double kHighestRateHz = 1.0e6;
 /// The longest stretch of time a recording may claim to span; what claims more is damaged.
-inline constexpr double kLongestRecording_s = 20.0 * 366.0 * 86400.0;
+inline constexpr double kLongestRecordingSeconds = 20.0 * 366.0 * 86400.0;
 /// An Error if `rate_hz` is outside; `where` is the file, with the place in it.
 [[nodiscard]] Status check_rate(double rate_hz, const std::string& where);
 

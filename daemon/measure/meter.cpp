@@ -9,8 +9,8 @@ namespace tramline::measure {
 namespace {
 
 constexpr std::size_t kChunk = 2048;
-constexpr double kProgressEvery_s = 60.0;
-constexpr std::int64_t kTolerableStep_ns = 5 * kNsPerMillisecond;
+constexpr double kProgressEverySeconds = 60.0;
+constexpr std::int64_t kTolerableStepNs = 5 * kNsPerMillisecond;
 
 std::vector<Channel> channels_of(const config::Site& site) {
   std::vector<Channel> channels;
@@ -88,7 +88,7 @@ void Meter::take(const Block& block, MeterOutput& out) {
   }
   if (block.anchor) {
     const std::int64_t step = clock_.anchor(*block.anchor);
-    if (in_stretch_ && std::abs(step) > kTolerableStep_ns) {
+    if (in_stretch_ && std::abs(step) > kTolerableStepNs) {
       out.records.emplace_back(
           storage::ClockChange{block.anchor->utc, "the clock was set", step, clock_state_});
     }
@@ -107,7 +107,7 @@ void Meter::begin_stretch(SampleIndex at, const std::string& why, MeterOutput& o
   in_stretch_ = true;
   stretch_begin_ns_ = clock_.elapsed_ns(static_cast<double>(at.value));
   next_sample_ = at;
-  next_progress_ = static_cast<double>(at.value) + kProgressEvery_s * rate_hz_;
+  next_progress_ = static_cast<double>(at.value) + kProgressEverySeconds * rate_hz_;
   for (HalfCycleRms& meter : meters_)
     meter.restart(at);
   const auto begin = static_cast<double>(at.value);
@@ -176,7 +176,7 @@ void Meter::give_out(std::size_t channel_index, MeterOutput& out) {
   frequency_.give_out_until(seen, flags_, out.records);
   if (seen >= next_progress_) {
     out.records.emplace_back(storage::CoverageProgress{half_cycle.begin, measured_ns(seen)});
-    next_progress_ += kProgressEvery_s * rate_hz_;
+    next_progress_ += kProgressEverySeconds * rate_hz_;
     flags_.forget_before(std::min({seen, aggregator_.oldest_pending(), frequency_.oldest_pending()}));
   }
 }

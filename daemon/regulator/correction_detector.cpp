@@ -7,20 +7,22 @@ namespace {
 
 constexpr int kPairsAMean = 4;
 constexpr int kMeansAtRest = 2;
-constexpr double kUndeclaredSpeed_v_per_s = 8.0;  // slowest usual, standards sheet: large single-phase units
-constexpr double kSlowest = 0.25;                 // of the declared speed
+constexpr double kUndeclaredSpeedVoltsPerSecond =
+    8.0;                           // slowest usual, standards sheet: large single-phase units
+constexpr double kSlowest = 0.25;  // of the declared speed
 constexpr double kFastest = 3.0;
 constexpr double kUndeclaredFastest = 20.0;
 constexpr double kLeastMovement = 0.003;  // of ratio
-constexpr std::int64_t kReversalWithin_ns = 10 * kNsPerSecond;
+constexpr std::int64_t kReversalWithinNs = 10 * kNsPerSecond;
 
 }  // namespace
 
 CorrectionDetector::CorrectionDetector(const config::RegulatorSettings& settings, double nominal_v)
-    : least_ratio_a_second_(kSlowest * settings.speed_v_per_s.value_or(kUndeclaredSpeed_v_per_s) / nominal_v),
+    : least_ratio_a_second_(kSlowest * settings.speed_v_per_s.value_or(kUndeclaredSpeedVoltsPerSecond) /
+                            nominal_v),
       most_ratio_a_second_(settings.speed_v_per_s
                                ? kFastest * *settings.speed_v_per_s / nominal_v
-                               : kUndeclaredFastest * kUndeclaredSpeed_v_per_s / nominal_v) {}
+                               : kUndeclaredFastest * kUndeclaredSpeedVoltsPerSecond / nominal_v) {}
 
 std::optional<storage::Correction> CorrectionDetector::take(const HalfCyclePair& pair) {
   if (std::isnan(pair.ratio)) return restart();
@@ -73,8 +75,8 @@ std::optional<storage::Correction> CorrectionDetector::end_movement() {
   correction.ratio_after = to_.ratio;
   correction.speed_v_per_s =
       std::abs(change) * to_.input_v / (static_cast<double>(to_.elapsed_ns - from_.elapsed_ns) / 1e9);
-  reversal_ = previous_ && previous_direction_ != direction_ &&
-              correction.begin - previous_->end < kReversalWithin_ns;
+  reversal_ =
+      previous_ && previous_direction_ != direction_ && correction.begin - previous_->end < kReversalWithinNs;
   previous_ = correction;
   previous_direction_ = direction_;
   return correction;

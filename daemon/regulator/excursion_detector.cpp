@@ -5,7 +5,7 @@
 namespace tramline::regulator {
 namespace {
 
-constexpr std::int64_t kBackFor_ns = 200 * kNsPerMillisecond;
+constexpr std::int64_t kBackForNs = 200 * kNsPerMillisecond;
 
 }  // namespace
 
@@ -32,7 +32,7 @@ std::optional<storage::Event> ExcursionDetector::take(const HalfCyclePair& pair,
   figures_.take(pair, site_, ideal_in_band);
   if (in_band) {
     if (!back_) back_ = pair;
-    if (pair.elapsed_ns - back_->elapsed_ns < kBackFor_ns) return std::nullopt;
+    if (pair.elapsed_ns - back_->elapsed_ns < kBackForNs) return std::nullopt;
     if (counted_) return end(storage::EventEnd::recovered);
     out_ = false;
     return std::nullopt;
