@@ -24,6 +24,12 @@ ClockState clock_of(const Statement& row, int at) {
   return {row.integer(at) != 0, row.is_null(at + 1) ? -1 : row.integer(at + 1)};
 }
 
+bool log_holds_something(const std::string& path) {
+  std::error_code code;
+  const auto size = std::filesystem::file_size(path + "-wal", code);
+  return !code && size > 0;
+}
+
 /// Waveforms are bounded where they are written; a larger one is not from this program.
 constexpr std::size_t kMostSamples = 50'000'000;
 
@@ -78,8 +84,23 @@ Result<LogbookReader> LogbookReader::open(const std::string& path) {
 
   auto database = Database::open(path, Database::Mode::read_only);
   if (!database) return database.error();
+  // SQLite makes files beside a logbook in WAL mode even to read it. Where it may not, the logbook can be
+  // read as it is, if no write-ahead log holds newer pages.
+  bool unchanging = false;
+  if (!database.value().execute("SELECT 1 FROM sqlite_schema LIMIT 1") &&
+      database.value().failed_of_access()) {
+    if (log_holds_something(path)) {
+      return Error{path,
+                   "what was written last is still in " + path + "-wal, and this folder may not be written",
+                   "copy both files to a folder of your own, and read the copy"};
+    }
+    unchanging = true;
+    database = Database::open(path, Database::Mode::read_unchanging);
+    if (!database) return database.error();
+  }
   if (auto known = check_identity(database.value()); !known) return known.error();
-  return LogbookReader(std::move(database).value());
+  if (auto known = check_tables(database.value()); !known) return known.error();
+  return LogbookReader(std::move(database).value(), unchanging);
 }
 
 Status LogbookReader::each(const std::string& sql, const Period& period, const char* table,
@@ -92,12 +113,15 @@ Status LogbookReader::each(const std::string& sql, const Period& period, const c
   for (;;) {
     const auto more = s.step();
     if (!more) return more.error();
-    if (!more.value()) return kDone;
+    if (!more.value()) break;
     if (!take_row(s)) {
       return Error{database_.path(), std::string("table ") + table + " holds a value that no record can have",
                    "the file is damaged or was altered"};
     }
   }
+  if (unchanging_ && log_holds_something(database_.path()))
+    return Error{database_.path(), "the logbook began to be written while it was read", "ask again"};
+  return kDone;
 }
 
 Result<std::vector<Session>> LogbookReader::sessions() const {
@@ -134,9 +158,9 @@ Result<std::vector<CoverageStretch>> LogbookReader::coverage(const Period& perio
 
 Result<std::vector<EventRow>> LogbookReader::events(const Period& period) const {
   std::vector<EventRow> found;
-  auto done =
-      each(std::string(kEventColumns) + "WHERE end_ns>=?1 AND begin_ns<?2 ORDER BY begin_ns,id", period,
-           "event", [&](const Statement& row) { return event_of(row, found.emplace_back()); });
+  auto done = each(
+      std::string(kEventColumns) + "WHERE (end_ns>=?1 OR end_reason=0) AND begin_ns<?2 ORDER BY begin_ns,id",
+      period, "event", [&](const Statement& row) { return event_of(row, found.emplace_back()); });
   if (!done) return done.error();
   return found;
 }

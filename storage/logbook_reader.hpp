@@ -58,10 +58,13 @@ struct PrunedDetail {
 /// thread.
 class LogbookReader {
  public:
+  /// A logbook that was closed in good order can also be read where nothing may be written (a folder of
+  /// somebody else's, a read-only disk).
   [[nodiscard]] static Result<LogbookReader> open(const std::string& path);
 
   [[nodiscard]] Result<std::vector<Session>> sessions() const;
   [[nodiscard]] Result<std::vector<CoverageStretch>> coverage(const Period& period) const;
+  /// An event that is still going on reaches into every later period.
   [[nodiscard]] Result<std::vector<EventRow>> events(const Period& period) const;
   /// Nothing: there is no event with this number.
   [[nodiscard]] Result<std::optional<EventRow>> event(std::int64_t id) const;
@@ -80,11 +83,13 @@ class LogbookReader {
   [[nodiscard]] Result<std::vector<PrunedDetail>> pruned() const;
 
  private:
-  explicit LogbookReader(Database database) : database_(std::move(database)) {}
+  LogbookReader(Database database, bool unchanging)
+      : database_(std::move(database)), unchanging_(unchanging) {}
   [[nodiscard]] Status each(const std::string& sql, const Period& period, const char* table,
                             const std::function<bool(const Statement&)>& take) const;
 
   Database database_;
+  bool unchanging_ = false;  ///< opened as a file that nobody writes
 };
 
 }  // namespace tramline::storage

@@ -13,6 +13,7 @@
 
 #include "storage/schema.hpp"
 #include "storage/sqlite.hpp"
+#include "storage/writer_lock.hpp"
 
 namespace tramline::storage {
 namespace {
@@ -85,15 +86,46 @@ Result<std::string> set_aside(const std::string& path, UtcNs now) {
   return to;
 }
 
-/// ok, or why the file is to be set aside.
-Status check_whole(const Database& database) {
+/// Nothing if the file is whole, else its damage in words. That it could not be looked at (locked, no room,
+/// no rights) is an Error and says nothing against the file.
+Result<std::optional<std::string>> damage_of(const Database& database) {
+  using Damage = std::optional<std::string>;
   auto check = database.prepare("PRAGMA quick_check(1)");
-  if (!check) return check.error();
+  if (!check) return database.failed_of_damage() ? Result(Damage(check.error().what)) : check.error();
   const auto row = check.value().step();
-  if (!row) return row.error();
-  if (row.value() && check.value().text(0) == "ok") return kDone;
-  return Error{database.path(), "the logbook is damaged: " + check.value().text(0),
-               "keep a copy, and name a new file"};
+  if (!row) return database.failed_of_damage() ? Result(Damage(row.error().what)) : row.error();
+  if (row.value() && check.value().text(0) == "ok") return Damage();
+  return Damage(check.value().text(0));
+}
+
+/// When a record was, for a loss that stands in its place.
+UtcNs time_of(const Record& record) {
+  return std::visit(
+      [](const auto& r) {
+        if constexpr (requires { r.begin; }) {
+          return r.begin;
+        } else if constexpr (requires { r.at; }) {
+          return r.at;
+        } else if constexpr (requires { r.from; }) {
+          return r.from;
+        } else if constexpr (requires { r.until; }) {
+          return r.until;
+        } else if constexpr (requires { r.end; }) {
+          return r.end;
+        } else {
+          return UtcNs{};
+        }
+      },
+      record);
+}
+
+/// A power cut while the logbook was being made leaves an SQLite file with nothing in it.
+bool is_empty(const Database& database) {
+  const auto application = database.integer_of("PRAGMA application_id");
+  const auto version = database.integer_of("PRAGMA user_version");
+  const auto objects = database.integer_of("SELECT count(*) FROM sqlite_schema");
+  return application && version && objects && application.value() == 0 && version.value() == 0 &&
+         objects.value() == 0;
 }
 
 }  // namespace
@@ -105,6 +137,7 @@ struct LogbookWriter::Inside {
     std::int64_t coverage = 0;
   };
 
+  WriterLock lock;  // outlives the connection
   Database database;
   bool in_large_batches = false;
   std::vector<std::string> remarks;
@@ -115,7 +148,7 @@ struct LogbookWriter::Inside {
       put_aggregate, put_frequency, put_regulator_interval, put_correction, insert_waveform, insert_trace,
       insert_clock_change, last_settings, insert_settings, insert_loss;
 
-  explicit Inside(Database opened) : database(std::move(opened)) {}
+  Inside(WriterLock taken, Database opened) : lock(std::move(taken)), database(std::move(opened)) {}
 
   Status prepare();
   Status set_up();
@@ -131,7 +164,7 @@ struct LogbookWriter::Inside {
   Status store(const ClockChange& change, const Place& at);
   Status store(const SettingsInForce& settings, const Place& at);
   Status store(const Loss& loss);
-  Result<std::int64_t> drop(const char* table, const char* condition, UtcNs before);
+  Result<std::int64_t> drop(const char* table, const std::string& condition, UtcNs before);
   Result<double> used_bytes() const;
 };
 
@@ -150,7 +183,8 @@ Status LogbookWriter::Inside::set_up() {
       return done;
   }
   if (auto known = check_identity(database); !known) return known;
-  return migrate(database, migrations());
+  if (auto done = migrate(database, migrations()); !done) return done;
+  return check_tables(database);
 }
 
 Status LogbookWriter::Inside::prepare() {
@@ -210,11 +244,17 @@ Status LogbookWriter::Inside::close_what_was_left_open() {
   if (!transaction) return transaction.error();
   // The last time known of a session is how far its coverage reached.
   const std::string known =
-      "max(begin_ns, coalesce((SELECT max(until_ns) FROM coverage WHERE coverage.session=event.session), "
-      "begin_ns))";
-  auto close =
-      database.prepare("UPDATE event SET end_reason=?1,end_ns=" + known + ",end_window_end_ns=" + known +
-                       ",duration_ns=" + known + "-begin_ns WHERE end_reason=0");
+      "max(end_ns, coalesce((SELECT max(until_ns) FROM coverage WHERE coverage.session=event.session), "
+      "end_ns))";
+  // Counted in samples: what its stretch measured, less what lies before the event.
+  const std::string duration =
+      "max(duration_ns, coalesce((SELECT coverage.measured_ns - CAST((event.begin_sample - "
+      "coverage.begin_sample) * 1e9 / session.rate_hz AS INTEGER) FROM coverage JOIN session ON "
+      "session.id=coverage.session WHERE coverage.session=event.session AND "
+      "coverage.begin_sample<=event.begin_sample ORDER BY coverage.begin_sample DESC LIMIT 1), duration_ns))";
+  auto close = database.prepare("UPDATE event SET end_reason=?1,end_ns=" + known +
+                                ",end_window_end_ns=max(end_window_end_ns, " + known +
+                                "),duration_ns=" + duration + " WHERE end_reason=0");
   if (!close) return close.error();
   close.value().bind(1, static_cast<std::int64_t>(EventEnd::cut_off));
   if (auto done = close.value().run(); !done) return done;
@@ -260,6 +300,8 @@ Result<LogbookWriter> LogbookWriter::open(const std::string& path, const OpenOpt
 
   const auto found = look_at(path);
   if (!found) return found.error();
+  auto lock = WriterLock::take(path);
+  if (!lock) return lock.error();
   if (found.value() == Found::something_else) {
     const Error no_logbook{path, "this is no logbook: not an SQLite file",
                            "name another file; this one was not touched"};
@@ -267,19 +309,23 @@ Result<LogbookWriter> LogbookWriter::open(const std::string& path, const OpenOpt
   }
   auto database = Database::open(path, Database::Mode::read_write_create);
   if (!database) return database.error();
-  if (found.value() == Found::sqlite) {
+  if (found.value() == Found::sqlite && !is_empty(database.value())) {
     // A stranger's file is refused before anything in it is looked at closely, and is never renamed.
     const auto application = database.value().integer_of("PRAGMA application_id");
     if (application && application.value() != kApplicationId) return check_identity(database.value()).error();
-    if (auto whole = check_whole(database.value()); !whole) {
+    const auto damaged = damage_of(database.value());
+    if (!damaged) return damaged.error();
+    if (damaged.value()) {
       database = Error{};  // closes it, so that it can be renamed
-      if (auto done = make_room(whole.error()); !done) return done.error();
+      const Error why{path, "the logbook is damaged: " + *damaged.value(),
+                      "keep a copy, and name a new file"};
+      if (auto done = make_room(why); !done) return done.error();
       database = Database::open(path, Database::Mode::read_write_create);
       if (!database) return database.error();
     }
   }
 
-  auto inside = std::make_unique<Inside>(std::move(database).value());
+  auto inside = std::make_unique<Inside>(std::move(lock).value(), std::move(database).value());
   inside->in_large_batches = options.in_large_batches;
   if (auto done = inside->set_up(); !done) return done.error();
   if (auto done = inside->prepare(); !done) return done.error();
@@ -311,10 +357,21 @@ Status LogbookWriter::Inside::store_all(std::vector<Record>& records) {
   auto transaction = Transaction::begin(database);
   if (!transaction) return transaction.error();
   Place at = place;
+  // A record that no row can hold is left out and counted; it must not hold up those behind it.
+  Loss left_out;
   for (std::vector<Record>* part : {&waiting, &records}) {
     for (const Record& record : *part) {
-      if (auto stored = store_any(record, at); !stored) return stored;
+      const auto stored = store_any(record, at);
+      if (stored) continue;
+      if (!database.failed_of_row()) return stored;
+      if (left_out.count++ == 0) {
+        left_out.at = time_of(record);
+        left_out.what = "records left out: the logbook cannot hold them (" + stored.error().what + ")";
+      }
     }
+  }
+  if (left_out.count > 0) {
+    if (auto done = store(left_out); !done) return done;
   }
   if (auto done = transaction.value().commit(); !done) return done;
   place = at;
@@ -537,7 +594,8 @@ constexpr int kMostBudgetSteps = 4000;
 
 }  // namespace
 
-Result<std::int64_t> LogbookWriter::Inside::drop(const char* table, const char* condition, UtcNs before) {
+Result<std::int64_t> LogbookWriter::Inside::drop(const char* table, const std::string& condition,
+                                                 UtcNs before) {
   auto statement =
       database.prepare(std::string("DELETE FROM ") + table + " WHERE " + condition + " AND begin_ns<?1");
   if (!statement) return statement.error();
@@ -561,10 +619,10 @@ Result<Pruned> LogbookWriter::prune(UtcNs now, const config::LogbookSettings& se
   if (auto flushed = flush(); !flushed) return flushed.error();
   Inside& in = *inside_;
   Pruned pruned;
-  const auto drop = [&](const Detail& detail, UtcNs before, const char* why) -> Status {
+  const auto drop = [&](const Detail& detail, const char* whose, UtcNs before, const char* why) -> Status {
     auto transaction = Transaction::begin(in.database);
     if (!transaction) return transaction.error();
-    const auto rows = in.drop(detail.table, detail.condition, before);
+    const auto rows = in.drop(detail.table, std::string(detail.condition) + " AND " + whose, before);
     if (!rows) return rows.error();
     if (rows.value() > 0) {
       auto note = in.database.prepare(
@@ -582,7 +640,11 @@ Result<Pruned> LogbookWriter::prune(UtcNs now, const config::LogbookSettings& se
   for (const Detail& detail : kDetails) {
     if (detail.keep_days == nullptr || !(settings.*detail.keep_days > 0.0)) continue;
     const auto keep_ns = static_cast<std::int64_t>(settings.*detail.keep_days * static_cast<double>(kDayNs));
-    if (auto done = drop(detail, now - keep_ns, "older than the site keeps them"); !done) return done.error();
+    // The times of an undated session do not tell its age.
+    if (auto done = drop(detail, "session IN (SELECT id FROM session WHERE dated<>0)", now - keep_ns,
+                         "older than the site keeps them");
+        !done)
+      return done.error();
   }
 
   const double budget = settings.size_budget_mb * 1e6;
@@ -600,7 +662,7 @@ Result<Pruned> LogbookWriter::prune(UtcNs now, const config::LogbookSettings& se
       const auto until = in.database.integer_of(
           "SELECT begin_ns" + where + " ORDER BY begin_ns LIMIT 1 OFFSET " + std::to_string(part - 1));
       if (!until) return until.error();
-      if (auto done = drop(detail, UtcNs{until.value() + 1}, "the logbook's size budget"); !done)
+      if (auto done = drop(detail, "1", UtcNs{until.value() + 1}, "the logbook's size budget"); !done)
         return done.error();
       used = in.used_bytes();
       if (!used) return used.error();

@@ -1,7 +1,9 @@
 #include "storage/schema.hpp"
 
+#include <algorithm>
 #include <array>
 #include <string>
+#include <vector>
 
 namespace tramline::storage {
 namespace {
@@ -162,6 +164,21 @@ CREATE TABLE pruned(
 
 constexpr std::array<Migration, 1> kMigrations = {{{kVersion1}}};
 
+/// Each table, index, view and trigger with the statement that made it, by name.
+Result<std::vector<std::string>> objects_of(const Database& database, const char* condition) {
+  auto statement = database.prepare(
+      std::string("SELECT type||' '||name||' '||coalesce(sql,'') FROM sqlite_schema WHERE ") + condition +
+      " ORDER BY type,name");
+  if (!statement) return statement.error();
+  std::vector<std::string> found;
+  for (;;) {
+    const auto row = statement.value().step();
+    if (!row) return row.error();
+    if (!row.value()) return found;
+    found.push_back(statement.value().text(0));
+  }
+}
+
 }  // namespace
 
 std::span<const Migration> migrations() {
@@ -180,6 +197,29 @@ Status migrate(Database& database, std::span<const Migration> steps) {
     if (auto done = transaction.value().commit(); !done) return done.error();
   }
   return kDone;
+}
+
+Status check_tables(const Database& database) {
+  const Error strange{database.path(), "its tables are not those of a logbook",
+                      "the file is damaged or was altered; keep a copy of it"};
+  const auto version = database.integer_of("PRAGMA user_version");
+  if (!version) return version.error();
+  if (version.value() < 0 || version.value() > newest_schema()) return strange;
+  auto model = Database::open(":memory:", Database::Mode::read_write_create);
+  if (!model) return model.error();
+  const auto steps = migrations().first(static_cast<std::size_t>(version.value()));
+  if (auto done = migrate(model.value(), steps); !done) return done;
+
+  const auto wanted = objects_of(model.value(), "name NOT LIKE 'sqlite_%'");
+  const auto found = objects_of(database, "name NOT LIKE 'sqlite_%' AND type IN ('table','index')");
+  const auto active = objects_of(database, "type NOT IN ('table','index')");
+  for (const auto* list : {&wanted, &found, &active}) {
+    if (!*list) return list->error();
+  }
+  // An index of somebody's own does no harm.
+  const bool complete =
+      std::includes(found.value().begin(), found.value().end(), wanted.value().begin(), wanted.value().end());
+  return complete && active.value().empty() ? Status(kDone) : Status(strange);
 }
 
 Status check_identity(const Database& database) {

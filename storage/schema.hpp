@@ -29,4 +29,8 @@ struct Migration {
 /// Whether the file is a logbook of a version this program knows; an Error says what it is instead.
 [[nodiscard]] Status check_identity(const Database& database);
 
+/// Whether the tables are those that `migrations()` makes, and nothing in the file runs by itself (views,
+/// triggers). A stranger's table of one of our names could otherwise keep a reader busy for ever.
+[[nodiscard]] Status check_tables(const Database& database);
+
 }  // namespace tramline::storage

@@ -3,6 +3,7 @@
 #include <sqlite3.h>
 
 #include <cmath>
+#include <filesystem>
 #include <utility>
 
 namespace tramline::storage {
@@ -119,6 +120,27 @@ bool Statement::is_null(int column) const {
   return sqlite3_column_type(statement_.get(), column) == SQLITE_NULL;
 }
 
+namespace {
+
+/// The path as a URI that tells SQLite the file will not change.
+std::string unchanging_name(const std::string& path) {
+  static constexpr char kDigits[] = "0123456789ABCDEF";
+  std::error_code code;
+  const std::filesystem::path absolute = std::filesystem::absolute(path, code);
+  std::string uri = "file://";
+  for (const char c : code ? path : absolute.string()) {
+    if (c != '%' && c != '?' && c != '#') {
+      uri += c;
+      continue;
+    }
+    const auto byte = static_cast<unsigned char>(c);
+    uri += {'%', kDigits[byte >> 4U], kDigits[byte & 0xfU]};
+  }
+  return uri + "?immutable=1";
+}
+
+}  // namespace
+
 void Database::Close::operator()(sqlite3* database) const {
   sqlite3_close_v2(database);
 }
@@ -126,8 +148,11 @@ void Database::Close::operator()(sqlite3* database) const {
 Result<Database> Database::open(const std::string& path, Mode mode) {
   sqlite3* raw = nullptr;
   const int flags =
-      mode == Mode::read_only ? SQLITE_OPEN_READONLY : SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE;
-  const int code = sqlite3_open_v2(path.c_str(), &raw, flags | SQLITE_OPEN_NOMUTEX, nullptr);
+      mode == Mode::read_write_create ? SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE : SQLITE_OPEN_READONLY;
+  const bool unchanging = mode == Mode::read_unchanging;
+  const std::string name = unchanging ? unchanging_name(path) : path;
+  const int code = sqlite3_open_v2(name.c_str(), &raw,
+                                   flags | SQLITE_OPEN_NOMUTEX | (unchanging ? SQLITE_OPEN_URI : 0), nullptr);
   Database database(raw, path);
   if (code != SQLITE_OK) {
     return raw != nullptr ? error_of(raw, path) : Error{path, "out of memory", ""};
@@ -165,6 +190,21 @@ Result<std::int64_t> Database::integer_of(const std::string& sql) const {
 
 std::int64_t Database::last_row_id() const {
   return sqlite3_last_insert_rowid(database_.get());
+}
+
+bool Database::failed_of_damage() const {
+  const int code = sqlite3_errcode(database_.get()) & 0xff;
+  return code == SQLITE_CORRUPT || code == SQLITE_NOTADB;
+}
+
+bool Database::failed_of_row() const {
+  const int code = sqlite3_errcode(database_.get()) & 0xff;
+  return code == SQLITE_CONSTRAINT || code == SQLITE_TOOBIG || code == SQLITE_MISMATCH;
+}
+
+bool Database::failed_of_access() const {
+  const int code = sqlite3_errcode(database_.get()) & 0xff;
+  return code == SQLITE_CANTOPEN || code == SQLITE_READONLY || code == SQLITE_PERM;
 }
 
 Result<Transaction> Transaction::begin(Database& database) {

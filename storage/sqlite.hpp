@@ -50,7 +50,11 @@ class Statement {
 /// An open database. One thread at a time.
 class Database {
  public:
-  enum class Mode { read_only, read_write_create };
+  enum class Mode {
+    read_only,
+    read_unchanging,  ///< needs no file beside it and takes no lock: only while nobody writes
+    read_write_create,
+  };
   [[nodiscard]] static Result<Database> open(const std::string& path, Mode mode);
 
   [[nodiscard]] Status execute(const std::string& sql);
@@ -58,6 +62,11 @@ class Database {
   /// The single integer a query gives, such as a PRAGMA's.
   [[nodiscard]] Result<std::int64_t> integer_of(const std::string& sql) const;
   [[nodiscard]] std::int64_t last_row_id() const;
+  /// What the call that failed just now failed of: the file itself is damaged or no SQLite; the one row does
+  /// not fit (others will); the file, or one beside it, cannot be opened or written.
+  [[nodiscard]] bool failed_of_damage() const;
+  [[nodiscard]] bool failed_of_row() const;
+  [[nodiscard]] bool failed_of_access() const;
   [[nodiscard]] const std::string& path() const { return path_; }
 
  private:

@@ -1,6 +1,7 @@
 #include <gmock/gmock.h>
 #include <gtest/gtest.h>
 #include <sqlite3.h>
+#include <unistd.h>
 
 #include <array>
 #include <filesystem>
@@ -17,6 +18,7 @@ namespace {
 
 namespace fs = std::filesystem;
 using ::testing::HasSubstr;
+using ::testing::Not;
 
 constexpr std::int64_t kSecond = kNsPerSecond;
 
@@ -341,6 +343,168 @@ TEST_F(Logbook, AValueThatNoRecordCanHaveIsAnErrorAndNotACrash) {
   EXPECT_THAT(rows.error().text(), HasSubstr("table event"));
   sql("UPDATE event SET kind='sag', reason=x'00ff', extreme_v='high'");
   EXPECT_TRUE(reader().events({}));
+}
+
+// ---- what must not harm a logbook ----------------------------------------------------------------------
+
+TEST_F(Logbook, ASecondWriterIsRefusedAndTheFirstOnesOpenEventStaysOpen) {
+  auto to = writer();
+  write(to, session());
+  write(to, {sag(5, EventEnd::open)});
+  EXPECT_THAT(refusal(), HasSubstr("another program is writing this logbook"));
+  EXPECT_EQ(reader().events({}).value()[0].event.end_reason, EventEnd::open);
+  EXPECT_FALSE(reader().sessions().value()[0].why_ended);
+}
+
+TEST_F(Logbook, AWriterThatWentLeavesRoomForTheNextAndNoLockBehind) {
+  { auto to = writer(); }
+  EXPECT_FALSE(fs::exists(path_ + ".writing"));
+  std::ofstream(path_ + ".writing") << "left by a power cut";
+  EXPECT_EQ(refusal(), "opened");
+}
+
+TEST_F(Logbook, AWholeLogbookThatCannotBeOpenedNowIsNotTakenForDamaged) {
+  { auto to = writer(); }
+  fs::create_directory(path_ + "-wal");  // stands in for a log of another owner, or a disk without room
+  OpenOptions daemon;
+  daemon.set_aside_damaged = true;
+  EXPECT_THAT(refusal(daemon), HasSubstr("unable to open"));
+  EXPECT_TRUE(fs::exists(path_));
+  for (const auto& entry : fs::directory_iterator(folder_))
+    EXPECT_THAT(entry.path().string(), Not(HasSubstr("damaged")));
+}
+
+TEST_F(Logbook, AFileLeftByAPowerCutInMidCreationBecomesALogbook) {
+  sql("PRAGMA auto_vacuum=INCREMENTAL; PRAGMA journal_mode=WAL");
+  ASSERT_GT(fs::file_size(path_), 0U);
+  auto to = writer();
+  write(to, session());
+  EXPECT_EQ(reader().sessions().value().size(), 1U);
+}
+
+TEST_F(Logbook, ARecordThatNoRowCanHoldIsCountedAndHoldsUpNoOther) {
+  auto to = writer();
+  write(to, session());
+  Correction correction;
+  correction.begin = {7};
+  correction.speed_v_per_s = kNotMeasured;
+  write(to, {correction});
+  write(to, {sag(5)});
+  EXPECT_EQ(reader().events({}).value().size(), 1U);
+  EXPECT_TRUE(reader().corrections({}).value().empty());
+  const auto losses = reader().losses().value();
+  ASSERT_EQ(losses.size(), 1U);
+  EXPECT_EQ(losses[0].count, 1);
+  EXPECT_EQ(losses[0].at.value, 7);
+  EXPECT_THAT(losses[0].what, HasSubstr("correction.speed_v_per_s"));
+}
+
+TEST_F(Logbook, CuttingOffAnEventNeverShortensIt) {
+  {
+    auto to = writer();
+    write(to, session());
+    Event event = sag(5, EventEnd::open);
+    event.end = {50 * kSecond};
+    event.duration_ns = 45 * kSecond;
+    write(to, {event, CoverageProgress{{10 * kSecond}, 10 * kSecond}});
+  }
+  auto next = writer();
+  const Event cut = reader().events({}).value()[0].event;
+  EXPECT_EQ(cut.end_reason, EventEnd::cut_off);
+  EXPECT_EQ(cut.end.value, 50 * kSecond);
+  EXPECT_EQ(cut.duration_ns, 45 * kSecond);
+}
+
+TEST_F(Logbook, TheDurationOfACutOffEventIsCountedInSamplesAndNotOnASteppedClock) {
+  {
+    auto to = writer();
+    write(to, session());
+    // The clock jumped ahead by an hour while the event went on: 160 s were measured in all.
+    write(to, {sag(100, EventEnd::open), CoverageProgress{{3760 * kSecond}, 160 * kSecond}});
+  }
+  auto next = writer();
+  EXPECT_EQ(reader().events({}).value()[0].event.duration_ns, 60 * kSecond);
+}
+
+TEST_F(Logbook, AnEventThatGoesOnReachesIntoEveryLaterPeriod) {
+  auto to = writer();
+  write(to, session());
+  write(to, {sag(5, EventEnd::open), sag(6)});
+  EXPECT_EQ(reader().events({UtcNs{3000 * kSecond}, {}}).value().size(), 1U);
+}
+
+TEST_F(Logbook, DetailOfAnUndatedSessionHasNoAge) {
+  auto to = writer();
+  write(to, {SessionBegin{"test 1", "a source", 6400.0, false, UtcNs{0}},
+             aggregate(Interval::three_seconds, 0, 1)});
+  ASSERT_TRUE(to.prune({1'800'000'000 * kSecond}, {}));
+  EXPECT_EQ(reader().aggregates(Interval::three_seconds, {}).value().size(), 1U);
+}
+
+TEST_F(Logbook, AViewInTheNameOfATableIsRefusedBeforeItIsAsked) {
+  { auto to = writer(); }
+  sql("DROP TABLE loss; CREATE VIEW loss(at_ns,what,count,id) AS SELECT 1,'',1,1");
+  EXPECT_THAT(LogbookReader::open(path_).error().text(), HasSubstr("not those of a logbook"));
+  EXPECT_THAT(refusal(), HasSubstr("not those of a logbook"));
+}
+
+TEST_F(Logbook, ATriggerIsRefused) {
+  { auto to = writer(); }
+  sql("CREATE TRIGGER t AFTER INSERT ON event BEGIN DELETE FROM event; END");
+  EXPECT_THAT(LogbookReader::open(path_).error().text(), HasSubstr("not those of a logbook"));
+}
+
+/// Somebody who may read but not write, while this lives; needs to be root to become it.
+class Stranger {
+ public:
+  Stranger() : became_(::seteuid(65534) == 0) {}
+  ~Stranger() {
+    if (became_) (void)!::seteuid(0);
+  }
+
+ private:
+  bool became_;
+};
+
+TEST_F(Logbook, ALogbookClosedInGoodOrderIsReadWhereNothingMayBeWritten) {
+  {
+    auto to = writer();
+    write(to, session());
+    write(to, {sag(5)});
+  }
+  fs::permissions(folder_, fs::perms(0555));
+  fs::permissions(path_, fs::perms(0444));
+  {
+    const Stranger stranger;
+    auto opened = LogbookReader::open(path_);
+    EXPECT_TRUE(opened) << (opened ? "" : opened.error().text());
+    if (opened) {
+      EXPECT_EQ(opened.value().events({}).value().size(), 1U);
+    }
+  }
+  fs::permissions(folder_, fs::perms(0755));
+}
+
+TEST_F(Logbook, ALogbookWithUnmergedPagesIsNotReadStaleWhereNothingMayBeWritten) {
+  const fs::path copy = folder_ / "copy";
+  fs::create_directories(copy);
+  {
+    auto to = writer();
+    write(to, session());
+    write(to, {sag(5)});
+    for (const char* suffix : {"", "-wal"})
+      fs::copy_file(path_ + suffix, copy / (std::string("site.logbook") + suffix));
+  }
+  fs::permissions(copy, fs::perms(0555));
+  {
+    const Stranger stranger;
+    const auto opened = LogbookReader::open((copy / "site.logbook").string());
+    EXPECT_FALSE(opened);
+    if (!opened) {
+      EXPECT_THAT(opened.error().text(), HasSubstr("copy both files"));
+    }
+  }
+  fs::permissions(copy, fs::perms(0755));
 }
 
 // ---- upkeep -------------------------------------------------------------------------------------------
