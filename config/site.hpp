@@ -15,7 +15,8 @@ namespace tramline::config {
 
 /// One sensor: where its samples come from and how they become volts.
 /// volts = (raw + offset) * scale, `raw` being what the source gives (a WAV's ±1, a CSV's number, a COMTRADE
-/// channel's own unit, the simulator's volts).
+/// channel's own unit, the simulator's volts, a board's volts, an IIO converter's volts, a sound card's ±1, a
+/// meter's register).
 struct ChannelSettings {
   Channel channel;
   std::string source_channel;  ///< column number from 1, or a name the source knows; empty: the next in order
@@ -144,7 +145,58 @@ struct RecordingSettings {
   bool primary = false;     ///< COMTRADE: take primary values, else secondary
 };
 
-using SourceSettings = std::variant<SimulatorSettings, RecordingSettings>;
+/// ---- live sources ----------------------------------------------------------------------------------
+
+/// A converter of the kernel's industrial I/O (IIO), on this machine or behind a network context.
+struct IioSettings {
+  std::string context = "local:";  ///< libiio's URI: "local:", "ip:192.168.7.2"
+  std::string device;              ///< name or id: "ad7606", "iio:device0"
+  double rate_hz = 0.0;            ///< 0: as the device stands
+  std::string trigger;             ///< name or id; empty: as the device stands
+  std::uint64_t block_frames = 0;  ///< frames a transfer (and watermark); 0: about 40 ms
+};
+
+/// A board or box that sends board frames (daemon/acquire/BOARD-FRAMES.md).
+struct BoardSettings {
+  enum class Link { serial, tcp, udp };
+  Link link = Link::serial;
+  std::string device;            ///< serial: "/dev/ttyACM0"
+  std::uint64_t baud = 921'600;  ///< serial; a USB serial port ignores it
+  std::string host;              ///< tcp: where the box is. udp: the address to listen on; empty: any
+  std::uint64_t port = 0;        ///< tcp: of the box. udp: to listen on
+};
+
+/// A sound interface behind isolating sensors, through ALSA.
+struct SoundSettings {
+  std::string device;         ///< ALSA's name: "hw:1,0"
+  double rate_hz = 48'000.0;  ///< as near as the hardware has it
+};
+
+/// A transducer that gives r.m.s. values in Modbus registers, asked at intervals.
+struct PolledMeterSettings {
+  enum class Link { tcp, rtu };
+  enum class Parity { none, even, odd };
+  Link link = Link::tcp;
+  std::string host;              ///< tcp
+  std::uint64_t port = 502;      ///< tcp
+  std::string device;            ///< rtu: "/dev/ttyUSB0"
+  std::uint64_t baud = 9600;     ///< rtu
+  Parity parity = Parity::even;  ///< rtu
+  std::uint64_t unit = 1;        ///< the meter's address
+  double every_s = 1.0;          ///< distance of readings
+};
+
+using SourceSettings = std::variant<SimulatorSettings, RecordingSettings, IioSettings, BoardSettings,
+                                    SoundSettings, PolledMeterSettings>;
+
+/// ---- the clock -------------------------------------------------------------------------------------
+
+/// Whom to believe about UTC.
+struct ClockSettings {
+  /// The installer's word for the bound on the kernel clock's error, where something disciplines it that the
+  /// kernel does not know of (a precision time protocol, a pulse a second); absent: the kernel's own word.
+  std::optional<double> stated_error_ms;
+};
 
 /// ---- the site --------------------------------------------------------------------------------------
 
@@ -160,6 +212,7 @@ struct Site {
   CaptureSettings capture;
   LogbookSettings logbook;
   SourceSettings source;
+  ClockSettings clock;
   std::string text;  ///< the file as read, for the settings history
 
   /// The lines between which a voltage counts as in band: the regulator's, or sag and swell thresholds

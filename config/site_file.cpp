@@ -31,6 +31,8 @@ void read_site(MapReader& root, Site& site) {
   read_capture(capture, site.capture);
   MapReader logbook = root.section("logbook");
   read_logbook(logbook, site.logbook);
+  MapReader clock = root.section("clock");
+  read_clock(clock, site.clock);
   MapReader source = root.section("source", kRequired);
   read_source(source, site, sound);
   root.refuse_other_keys();

@@ -297,4 +297,10 @@ void read_logbook(MapReader& map, LogbookSettings& logbook) {
   map.refuse_other_keys();
 }
 
+void read_clock(MapReader& map, ClockSettings& clock) {
+  map.number("stated_error_ms", clock.stated_error_ms, {"the stated error of the clock", 0.001, 1000.0, "ms"},
+             absent_means("the kernel's word"));
+  map.refuse_other_keys();
+}
+
 }  // namespace tramline::config

@@ -25,5 +25,6 @@ bool read_regulator(MapReader& map, Site& site, SoundFigures sound);
 void read_events(MapReader& map, EventSettings& events);
 void read_capture(MapReader& map, CaptureSettings& capture);
 void read_logbook(MapReader& map, LogbookSettings& logbook);
+void read_clock(MapReader& map, ClockSettings& clock);
 
 }  // namespace tramline::config

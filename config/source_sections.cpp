@@ -12,6 +12,7 @@
 #include <utility>
 #include <vector>
 
+#include "config/live_sections.hpp"
 #include "config/time_text.hpp"
 
 namespace tramline::config {
@@ -303,21 +304,38 @@ void read_recording(MapReader& map, RecordingSettings& settings) {
 }  // namespace
 
 void read_source(MapReader& map, Site& site, SoundFigures sound) {
-  enum class Kind { none, simulator, recording };
+  enum class Kind { none, simulator, recording, iio, serial, tcp, udp, audio, modbus_tcp, modbus_rtu };
   Kind kind = Kind::none;
-  map.word<Kind>("kind", kind, {{"simulator", Kind::simulator}, {"recording", Kind::recording}},
+  map.word<Kind>("kind", kind,
+                 {{"simulator", Kind::simulator},
+                  {"recording", Kind::recording},
+                  {"iio", Kind::iio},
+                  {"serial", Kind::serial},
+                  {"tcp", Kind::tcp},
+                  {"udp", Kind::udp},
+                  {"sound", Kind::audio},
+                  {"modbus_tcp", Kind::modbus_tcp},
+                  {"modbus_rtu", Kind::modbus_rtu}},
                  "the kind of a source", kRequired);
   // Without a kind nothing can be said of the other keys.
-  if (kind == Kind::simulator || map.is_describing()) {
+  const auto is = [&](Kind one) { return kind == one || map.is_describing(); };
+  if (is(Kind::simulator)) {
     SimulatorSettings settings;
     read_simulator(map, site, sound, settings);
     site.source = std::move(settings);
   }
-  if (kind == Kind::recording || map.is_describing()) {
+  if (is(Kind::recording)) {
     RecordingSettings settings;
     read_recording(map, settings);
     site.source = std::move(settings);
   }
+  if (is(Kind::iio)) site.source = read_iio(map);
+  if (is(Kind::serial)) site.source = read_board(map, BoardSettings::Link::serial);
+  if (is(Kind::tcp)) site.source = read_board(map, BoardSettings::Link::tcp);
+  if (is(Kind::udp)) site.source = read_board(map, BoardSettings::Link::udp);
+  if (is(Kind::audio)) site.source = read_sound(map);
+  if (is(Kind::modbus_tcp)) site.source = read_polled_meter(map, PolledMeterSettings::Link::tcp, site);
+  if (is(Kind::modbus_rtu)) site.source = read_polled_meter(map, PolledMeterSettings::Link::rtu, site);
 }
 
 }  // namespace tramline::config

@@ -6,7 +6,7 @@
 
 namespace tramline::config {
 
-/// Reads the section `source`: its `kind`, then the simulator's keys or a recording's. After all other
+/// Reads the section `source`: its `kind`, then the keys of that kind. After all other
 /// sections, which it is checked against.
 void read_source(MapReader& map, Site& site, SoundFigures sound);
 

@@ -18,6 +18,13 @@ enum class GapCause : std::uint8_t {
   not_a_number,  ///< the recording holds no number there
   time_jump,     ///< the recording's own time jumps
   rate_change,   ///< the sample rate changes by more than a few percent
+  overrun,       ///< the device or this computer was too slow to take them
+};
+
+/// Why a source says the time of a sample anew.
+enum class AnchorCause : std::uint8_t {
+  clock_set,  ///< UTC itself stepped
+  refined,    ///< the sample clock is known better by now
 };
 
 /// "Sample `at` was taken at `utc`, and from it on samples come at `rate_hz`."
@@ -25,6 +32,7 @@ struct ClockAnchor {
   SampleIndex at;
   UtcNs utc;
   double rate_hz = 0.0;
+  AnchorCause cause = AnchorCause::clock_set;
 };
 
 /// Frames [first, first + frames) of the block's channel `channel` stood at the sensor's limit.
@@ -37,8 +45,9 @@ struct OverRangeSpan {
 /// A stretch of simultaneous samples in volts, planar: each channel's samples stand side by side.
 ///
 /// Who fills it owns it and reuses it; `resize()` allocates only when it grows. Channels are in the site's
-/// order. Samples are finite: a source turns anything else into a gap. A gap shows as a `first` beyond the
-/// end of the block before; then `gap` names the cause.
+/// order. Of a polled meter a block holds one reading, and its frames are r.m.s. values instead (StreamInfo).
+/// Samples are finite: a source turns anything else into a gap. A gap shows as a `first` beyond the end of
+/// the block before; then `gap` names the cause.
 struct Block {
   SampleIndex first;
   GapCause gap = GapCause::none;

@@ -35,11 +35,17 @@ const char* text_of(GapCause cause) {
       return "the recording's time jumps";
     case GapCause::rate_change:
       return "the sample rate changes";
+    case GapCause::overrun:
+      return "samples came faster than they were taken";
     case GapCause::none:
     case GapCause::samples_lost:
       break;
   }
   return "samples lost";
+}
+
+const char* text_of(AnchorCause cause) {
+  return cause == AnchorCause::refined ? "the time of the samples was measured anew" : "the clock was set";
 }
 
 }  // namespace
@@ -90,7 +96,7 @@ void Meter::take(const Block& block, MeterOutput& out) {
     const std::int64_t step = clock_.anchor(*block.anchor);
     if (in_stretch_ && std::abs(step) > kTolerableStepNs) {
       out.records.emplace_back(
-          storage::ClockChange{block.anchor->utc, "the clock was set", step, clock_state_});
+          storage::ClockChange{block.anchor->utc, text_of(block.anchor->cause), step, clock_state_});
     }
   }
   if (!in_stretch_) begin_stretch(block.first, why_begun_, out);

@@ -1,0 +1,18 @@
+#include "daemon/acquire/polled_meter.hpp"
+
+namespace tramline::acquire {
+namespace {
+
+class Unfinished : public Device {
+ public:
+  Result<StreamInfo> open(const std::atomic<bool>&) override { return Error{"", "not written yet", ""}; }
+  Result<bool> read(Arrival&, std::chrono::milliseconds) override { return false; }
+};
+
+}  // namespace
+
+std::unique_ptr<Device> make_polled_meter(const config::PolledMeterSettings&, std::vector<config::ChannelSettings>) {
+  return std::make_unique<Unfinished>();
+}
+
+}  // namespace tramline::acquire
