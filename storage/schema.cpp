@@ -162,7 +162,15 @@ CREATE TABLE pruned(
   rows INTEGER NOT NULL) WITHOUT ROWID;
 )sql";
 
-constexpr std::array<Migration, 1> kMigrations = {{{kVersion1}}};
+constexpr const char* kVersion2 = R"sql(
+ALTER TABLE session ADD COLUMN readings_every_ns INTEGER NOT NULL DEFAULT 0;
+ALTER TABLE event RENAME COLUMN clock_synchronised TO clock_trust;
+ALTER TABLE aggregate RENAME COLUMN clock_synchronised TO clock_trust;
+ALTER TABLE frequency RENAME COLUMN clock_synchronised TO clock_trust;
+ALTER TABLE clock_change RENAME COLUMN clock_synchronised TO clock_trust;
+)sql";
+
+constexpr std::array<Migration, 2> kMigrations = {{{kVersion1}, {kVersion2}}};
 
 /// Each table, index, view and trigger with the statement that made it, by name.
 Result<std::vector<std::string>> objects_of(const Database& database, const char* condition) {

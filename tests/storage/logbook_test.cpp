@@ -92,7 +92,7 @@ Event sag(std::int64_t begin_s, EventEnd end = EventEnd::recovered) {
   event.reason = "the supply's doing; DROP TABLE event; --'";
   event.held_off = true;
   event.input_low_v = 131.25;
-  event.clock = {true, 1'500'000};
+  event.clock = {ClockTrust::holdover, 1'500'000};
   return event;
 }
 
@@ -183,7 +183,7 @@ TEST_F(Logbook, EveryOtherKindOfRecordComesBackAsWell) {
   interval.travel = 0.25;
   write(to, {interval, Correction{Phase::l1, {64}, {10}, {20}, 1.0, 1.17, 20.0},
              Frequency{{0}, {10 * kSecond}, 49.98, 499, false, true, {}},
-             ClockChange{{7}, "the clock was set", -3, {true, 5}}, Loss{{8}, "aggregates dropped", 4},
+             ClockChange{{7}, "the clock was set", -3, {ClockTrust::synchronised, 5}}, Loss{{8}, "aggregates dropped", 4},
              SettingsInForce{{0}, "site: {}"}, CoverageProgress{{60 * kSecond}, 60 * kSecond}});
   Waveform waveform;
   waveform.begin = {100};
@@ -288,7 +288,7 @@ TEST_F(Logbook, SomebodyElsesDatabaseIsRefusedEvenByTheDaemon) {
 TEST_F(Logbook, ALogbookOfANewerSchemaIsRefusedWithBothVersions) {
   { auto to = writer(); }
   sql("PRAGMA user_version=7");
-  EXPECT_THAT(refusal(), HasSubstr("schema 7; this program knows up to 1"));
+  EXPECT_THAT(refusal(), HasSubstr("schema 7; this program knows up to " + std::to_string(newest_schema())));
   EXPECT_THAT(LogbookReader::open(path_).error().text(), HasSubstr("newer version"));
 }
 
@@ -435,7 +435,7 @@ TEST_F(Logbook, AnEventThatGoesOnReachesIntoEveryLaterPeriod) {
 
 TEST_F(Logbook, DetailOfAnUndatedSessionHasNoAge) {
   auto to = writer();
-  write(to, {SessionBegin{"test 1", "a source", 6400.0, false, UtcNs{0}},
+  write(to, {SessionBegin{"test 1", "a source", 1000.0, false, UtcNs{0}, kSecond},
              aggregate(Interval::three_seconds, 0, 1)});
   ASSERT_TRUE(to.prune({1'800'000'000 * kSecond}, {}));
   EXPECT_EQ(reader().aggregates(Interval::three_seconds, {}).value().size(), 1U);
