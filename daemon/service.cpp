@@ -17,6 +17,7 @@ constexpr std::chrono::milliseconds kBlockEvery(40);
 constexpr std::chrono::milliseconds kWaitForDisk(20);
 constexpr std::size_t kMostFrames = 16384;
 constexpr std::chrono::seconds kLookAtClockEvery(10);
+constexpr std::chrono::hours kRemindEvery(24);
 constexpr std::chrono::seconds kFirstRetry(1);
 constexpr std::chrono::seconds kLongestRetry(60);
 
@@ -102,6 +103,7 @@ void Service::open_source() {
   records_.emplace_back(storage::SessionBegin{std::string("tramlined ") + kVersion, info.what, info.rate_hz,
                                               info.dated, info.begin});
   records_.emplace_back(storage::SettingsInForce{info.begin, site_->text});
+  records_.emplace_back(storage::CalibrationInForce{info.begin, site_->calibration.text});
   queue_.put(records_);
   source_began_ = Clock::now();
   frames_taken_ = 0;
@@ -121,6 +123,14 @@ void Service::close_source(storage::EventEnd reason, const std::string& why) {
 void Service::look_at_clock() {
   next_look_ = Clock::now() + kLookAtClockEvery;
   if (real_time_) pipeline_->clock_state(kernel_clock_state());
+  remind_of_calibration();
+}
+
+void Service::remind_of_calibration() {
+  if (Clock::now() < next_reminder_) return;
+  next_reminder_ = Clock::now() + kRemindEvery;
+  for (const std::string& reminder : config::due_reminders(site_->calibration, now(), site_->zone))
+    log_->warn("{}", reminder);
 }
 
 std::size_t Service::frames_due() const {
@@ -207,6 +217,7 @@ void Service::reread() {
   close_source(storage::EventEnd::gap, "the site file was read again");
   site_ = std::make_unique<config::Site>(std::move(*file.site));
   retry_after_ = kFirstRetry;
+  next_reminder_ = {};
   open_source();
 }
 

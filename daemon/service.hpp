@@ -50,6 +50,7 @@ class Service {
   void source_failed(const Error& error);
   void reread();
   void look_at_clock();
+  void remind_of_calibration();
   void await_signal();
   void stop(const std::string& why);
   void schedule(Clock::duration after);
@@ -74,6 +75,7 @@ class Service {
   std::int64_t frames_taken_ = 0;
   Clock::duration retry_after_;
   Clock::time_point next_look_;
+  Clock::time_point next_reminder_{};
   bool stopping_ = false;
 };
 

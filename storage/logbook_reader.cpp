@@ -100,7 +100,10 @@ Result<LogbookReader> LogbookReader::open(const std::string& path) {
   }
   if (auto known = check_identity(database.value()); !known) return known.error();
   if (auto known = check_tables(database.value()); !known) return known.error();
-  return LogbookReader(std::move(database).value(), unchanging);
+  // A logbook of version 1, which only a writer brings forward, has no such table.
+  const auto version = database.value().integer_of("PRAGMA user_version");
+  if (!version) return version.error();
+  return LogbookReader(std::move(database).value(), unchanging, version.value() >= 2);
 }
 
 Status LogbookReader::each(const std::string& sql, const Period& period, const char* table,
@@ -356,6 +359,35 @@ Result<std::optional<std::string>> LogbookReader::settings(std::optional<UtcNs> 
       });
   if (!done) return done.error();
   return text;
+}
+
+Result<std::string> LogbookReader::calibration(std::optional<UtcNs> at) const {
+  if (!has_calibrations_) return std::string();
+  std::string text;
+  const Period until{std::nullopt, at};
+  // By session, not by time: whatever their dates, a session is calibrated as its own begin says.
+  auto done = each(
+      "SELECT text FROM calibration WHERE ?1<=?2 AND session<=(SELECT id FROM session WHERE begin_ns<=?2 "
+      "ORDER BY "
+      "begin_ns DESC,id DESC LIMIT 1) ORDER BY id DESC LIMIT 1",
+      until, "calibration", [&](const Statement& row) {
+        text = row.text(0);
+        return true;
+      });
+  if (!done) return done.error();
+  return text;
+}
+
+Result<std::vector<CalibrationRow>> LogbookReader::calibrations() const {
+  std::vector<CalibrationRow> found;
+  if (!has_calibrations_) return found;
+  auto done = each("SELECT session,from_ns,text FROM calibration WHERE ?1<=?2 ORDER BY id", {}, "calibration",
+                   [&](const Statement& row) {
+                     found.push_back({row.integer(0), {{row.integer(1)}, row.text(2)}});
+                     return true;
+                   });
+  if (!done) return done.error();
+  return found;
 }
 
 Result<std::vector<Loss>> LogbookReader::losses() const {

@@ -162,7 +162,15 @@ CREATE TABLE pruned(
   rows INTEGER NOT NULL) WITHOUT ROWID;
 )sql";
 
-constexpr std::array<Migration, 1> kMigrations = {{{kVersion1}}};
+constexpr const char* kVersion2 = R"sql(
+CREATE TABLE calibration(
+  id INTEGER PRIMARY KEY,
+  session INTEGER NOT NULL REFERENCES session(id),
+  from_ns INTEGER NOT NULL,
+  text TEXT NOT NULL);
+)sql";
+
+constexpr std::array<Migration, 2> kMigrations = {{{kVersion1}, {kVersion2}}};
 
 /// Each table, index, view and trigger with the statement that made it, by name.
 Result<std::vector<std::string>> objects_of(const Database& database, const char* condition) {
