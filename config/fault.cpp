@@ -5,7 +5,7 @@
 namespace tramline::config {
 
 std::string Fault::text(std::string_view file_name) const {
-  std::string line(file_name);
+  std::string line(file.empty() ? file_name : std::string_view(file));
   if (at.line > 0) {
     line += ':';
     line += std::to_string(at.line);

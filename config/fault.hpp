@@ -19,10 +19,12 @@ struct Fault {
   Position at;
   std::string
       path;  ///< the key, such as `events.sag_pct` or `channels[2].scale` (list items count from 1); or empty
-  std::string what;     ///< reads on from the path: "is 101"
-  std::string allowed;  ///< "a sag threshold lies between 1 and 100 percent of nominal_v"
+  std::string what;       ///< reads on from the path: "is 101"
+  std::string allowed;    ///< "a sag threshold lies between 1 and 100 percent of nominal_v"
+  std::string file = {};  ///< where it is not in the site file itself but in one beside it
 
-  /// "site.yaml:14:11: events.sag_pct is 101; a sag threshold lies between 1 and 100 percent of nominal_v"
+  /// "site.yaml:14:11: events.sag_pct is 101; a sag threshold lies between 1 and 100 percent of nominal_v";
+  /// `file_name` is the site file's.
   [[nodiscard]] std::string text(std::string_view file_name) const;
 };
 
@@ -32,10 +34,10 @@ struct Findings {
   std::vector<Fault> remarks;
 
   void fault(Position at, std::string path, std::string what, std::string allowed) {
-    faults.push_back({at, std::move(path), std::move(what), std::move(allowed)});
+    faults.push_back({at, std::move(path), std::move(what), std::move(allowed), {}});
   }
   void remark(Position at, std::string path, std::string what, std::string allowed) {
-    remarks.push_back({at, std::move(path), std::move(what), std::move(allowed)});
+    remarks.push_back({at, std::move(path), std::move(what), std::move(allowed), {}});
   }
 };
 

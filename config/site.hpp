@@ -7,6 +7,7 @@
 #include <variant>
 #include <vector>
 
+#include "config/calibration.hpp"
 #include "config/units.hpp"
 
 /// What a site is: plain structs, filled from the YAML site file by `read_site_file()` (site_file.hpp).
@@ -213,7 +214,8 @@ struct Site {
   LogbookSettings logbook;
   SourceSettings source;
   ClockSettings clock;
-  std::string text;  ///< the file as read, for the settings history
+  std::string text;         ///< the file as read, for the settings history
+  Calibration calibration;  ///< of its sensors, from the file beside it; already in `channels`
 
   /// The lines between which a voltage counts as in band: the regulator's, or sag and swell thresholds
   /// without one.

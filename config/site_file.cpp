@@ -3,10 +3,13 @@
 #include <cerrno>
 #include <cstdio>
 #include <filesystem>
+#include <iterator>
 #include <memory>
 #include <system_error>
 #include <utility>
 
+#include "config/calibration_file.hpp"
+#include "config/result.hpp"
 #include "config/site_sections.hpp"
 #include "config/source_sections.hpp"
 #include "config/yaml_tree.hpp"
@@ -36,6 +39,47 @@ void read_site(MapReader& root, Site& site) {
   MapReader source = root.section("source", kRequired);
   read_source(source, site, sound);
   root.refuse_other_keys();
+}
+
+struct Close {
+  void operator()(std::FILE* file) const { std::fclose(file); }
+};
+
+/// The error's `where` is empty if there is no such file, else `path`.
+Result<std::string> read_text(const std::string& path, const std::string& noun) {
+  errno = 0;
+  const std::unique_ptr<std::FILE, Close> file(std::fopen(path.c_str(), "rb"));
+  if (!file) {
+    const bool none = errno == ENOENT || errno == ENOTDIR;
+    return Error{none ? "" : path, "cannot be opened: " + std::generic_category().message(errno),
+                 "give the path of " + noun + " that may be read"};
+  }
+  // One byte more than is allowed tells a file that is too large, also where no size can be asked for (a
+  // pipe).
+  std::string text(kLargestFileBytes + 1, '\0');
+  errno = 0;
+  text.resize(std::fread(text.data(), 1, text.size(), file.get()));
+  if (std::ferror(file.get()) != 0) {
+    return Error{path, "cannot be read: " + std::generic_category().message(errno),
+                 "give the path of " + noun};
+  }
+  return text;
+}
+
+/// Puts the calibration at `path`, if there is one, into the site. Its faults stand behind the site file's.
+void add_calibration(SiteFile& file, const std::string& path) {
+  const Result<std::string> text = read_text(path, "a calibration file");
+  if (!text && text.error().where.empty()) return;
+  Findings findings;
+  if (!text) {
+    findings.faults.push_back({{}, "", text.error().what, "make it readable, or remove it", path});
+  } else if (file.ok()) {
+    calibrate(*file.site, text.value(), path, findings);
+  } else {
+    (void)parse_calibration(text.value(), path, findings);
+  }
+  if (!findings.faults.empty()) file.site.reset();
+  std::move(findings.faults.begin(), findings.faults.end(), std::back_inserter(file.faults));
 }
 
 }  // namespace
@@ -76,31 +120,16 @@ SiteFile parse_site(std::string_view text, std::string_view file_name) {
 }
 
 SiteFile read_site_file(const std::string& path) {
-  SiteFile failed;
-  failed.file_name = path;
-  const auto cannot = [&failed](std::string what, std::string remedy) {
-    failed.faults.push_back({{}, "", std::move(what), std::move(remedy)});
+  const Result<std::string> text = read_text(path, "a site file");
+  if (!text) {
+    SiteFile failed;
+    failed.file_name = path;
+    failed.faults.push_back({{}, "", text.error().what, text.error().remedy});
     return failed;
-  };
-  struct Close {
-    void operator()(std::FILE* file) const { std::fclose(file); }
-  };
-  errno = 0;
-  const std::unique_ptr<std::FILE, Close> file(std::fopen(path.c_str(), "rb"));
-  if (!file) {
-    return cannot("cannot be opened: " + std::generic_category().message(errno),
-                  "give the path of a site file that may be read");
   }
-  // One byte more than is allowed tells a file that is too large, also where no size can be asked for (a
-  // pipe).
-  std::string text(kLargestFileBytes + 1, '\0');
-  errno = 0;
-  text.resize(std::fread(text.data(), 1, text.size(), file.get()));
-  if (std::ferror(file.get()) != 0) {
-    return cannot("cannot be read: " + std::generic_category().message(errno),
-                  "give the path of a site file");
-  }
-  return parse_site(text, path);
+  SiteFile file = parse_site(text.value(), path);
+  add_calibration(file, calibration_path(path));
+  return file;
 }
 
 std::vector<KeyDescription> site_file_keys() {

@@ -33,7 +33,9 @@ struct SiteFile {
 /// known.
 SiteFile parse_site(std::string_view text, std::string_view file_name);
 
-/// The same from the file at `path`. A file that cannot be read is a fault without a place.
+/// The same from the file at `path`, with the calibration of its sensors if there is a calibration file
+/// beside it (calibration_file.hpp), whose faults are faults of the site. A file that cannot be read is a
+/// fault without a place.
 SiteFile read_site_file(const std::string& path);
 
 /// Every key a site file may hold, in the order of SITE-FILE.md.

@@ -18,6 +18,7 @@ constexpr std::chrono::milliseconds kBlockEvery(40);
 constexpr std::chrono::milliseconds kWaitForDisk(20);
 constexpr std::size_t kMostFrames = 16384;
 constexpr std::chrono::seconds kLookAtClockEvery(10);
+constexpr std::chrono::hours kRemindEvery(24);
 constexpr std::chrono::seconds kFirstRetry(1);
 constexpr std::chrono::seconds kLongestRetry(60);
 constexpr std::chrono::seconds kFirstReport(60);
@@ -110,6 +111,7 @@ void Service::begin_measuring() {
                                               info.dated, info.begin,
                                               std::llround(info.readings_every_s * 1e9)});
   records_.emplace_back(storage::SettingsInForce{info.begin, site_->text});
+  records_.emplace_back(storage::CalibrationInForce{info.begin, site_->calibration.text});
   clock_watch_.emplace(site_->clock);
   clock_trust_.reset();
   look_at_clock();
@@ -132,6 +134,7 @@ void Service::close_source(storage::EventEnd reason, const std::string& why) {
 
 void Service::look_at_clock() {
   next_look_ = Clock::now() + kLookAtClockEvery;
+  remind_of_calibration();
   if (!real_time_) return;
   storage::ClockState state = clock_watch_->look(kernel_clock());
   // The samples' own time is a little worse than the clock's.
@@ -158,6 +161,13 @@ void Service::report_health() {
   log_->info("source: {} samples taken, {} lost, {} not taken in time, {} over-range, {} bytes refused",
              health.frames, health.lost_frames, health.overrun_frames, health.over_range_frames,
              health.refused_bytes);
+}
+
+void Service::remind_of_calibration() {
+  if (Clock::now() < next_reminder_) return;
+  next_reminder_ = Clock::now() + kRemindEvery;
+  for (const std::string& reminder : config::due_reminders(site_->calibration, now(), site_->zone))
+    log_->warn("{}", reminder);
 }
 
 std::size_t Service::frames_due() const {
@@ -271,6 +281,7 @@ void Service::reread() {
   close_source(storage::EventEnd::gap, "the site file was read again");
   site_ = std::make_unique<config::Site>(std::move(*file.site));
   retry_after_ = kFirstRetry;
+  next_reminder_ = {};
   open_source();
 }
 

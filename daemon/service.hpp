@@ -54,6 +54,7 @@ class Service {
   void source_failed(const Error& error);
   void reread();
   void look_at_clock();
+  void remind_of_calibration();
   void await_signal();
   void stop(const std::string& why);
   void schedule(Clock::duration after);
@@ -81,6 +82,7 @@ class Service {
   std::optional<ClockWatch> clock_watch_;
   std::optional<storage::ClockTrust> clock_trust_;  // as last recorded in this session
   Clock::time_point next_report_;
+  Clock::time_point next_reminder_{};
   bool stopping_ = false;
 };
 

@@ -105,12 +105,26 @@ Result<LogbookReader> LogbookReader::open(const std::string& path) {
   }
   if (auto known = check_identity(database.value()); !known) return known.error();
   if (auto known = check_tables(database.value()); !known) return known.error();
-  return LogbookReader(std::move(database).value(), unchanging);
+  const auto version = database.value().integer_of("PRAGMA user_version");
+  if (!version) return version.error();
+  return LogbookReader(std::move(database).value(), unchanging, version.value());
+}
+
+Result<Statement> LogbookReader::prepare(std::string sql) const {
+  if (version_ == 1) {
+    const auto say = [&sql](std::string_view now, std::string_view then) {
+      for (std::size_t at = sql.find(now); at != std::string::npos; at = sql.find(now, at + then.size()))
+        sql.replace(at, now.size(), then);
+    };
+    say("clock_trust", "clock_synchronised");
+    say("readings_every_ns", "0");
+  }
+  return database_.prepare(sql);
 }
 
 Status LogbookReader::each(const std::string& sql, const Period& period, const char* table,
                            const std::function<bool(const Statement&)>& take_row) const {
-  auto statement = database_.prepare(sql);
+  auto statement = prepare(sql);
   if (!statement) return statement.error();
   Statement& s = statement.value();
   s.bind(1, period.from ? period.from->value : std::numeric_limits<std::int64_t>::min());
@@ -173,7 +187,7 @@ Result<std::vector<EventRow>> LogbookReader::events(const Period& period) const 
 }
 
 Result<std::optional<EventRow>> LogbookReader::event(std::int64_t id) const {
-  auto statement = database_.prepare(std::string(kEventColumns) + "WHERE id=?1");
+  auto statement = prepare(std::string(kEventColumns) + "WHERE id=?1");
   if (!statement) return statement.error();
   statement.value().bind(1, id);
   const auto row = statement.value().step();
@@ -363,6 +377,35 @@ Result<std::optional<std::string>> LogbookReader::settings(std::optional<UtcNs> 
       });
   if (!done) return done.error();
   return text;
+}
+
+Result<std::string> LogbookReader::calibration(std::optional<UtcNs> at) const {
+  if (!has_calibrations()) return std::string();
+  std::string text;
+  const Period until{std::nullopt, at};
+  // By session, not by time: whatever their dates, a session is calibrated as its own begin says.
+  auto done = each(
+      "SELECT text FROM calibration WHERE ?1<=?2 AND session<=(SELECT id FROM session WHERE begin_ns<=?2 "
+      "ORDER BY "
+      "begin_ns DESC,id DESC LIMIT 1) ORDER BY id DESC LIMIT 1",
+      until, "calibration", [&](const Statement& row) {
+        text = row.text(0);
+        return true;
+      });
+  if (!done) return done.error();
+  return text;
+}
+
+Result<std::vector<CalibrationRow>> LogbookReader::calibrations() const {
+  std::vector<CalibrationRow> found;
+  if (!has_calibrations()) return found;
+  auto done = each("SELECT session,from_ns,text FROM calibration WHERE ?1<=?2 ORDER BY id", {}, "calibration",
+                   [&](const Statement& row) {
+                     found.push_back({row.integer(0), {{row.integer(1)}, row.text(2)}});
+                     return true;
+                   });
+  if (!done) return done.error();
+  return found;
 }
 
 Result<std::vector<Loss>> LogbookReader::losses() const {

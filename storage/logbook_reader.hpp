@@ -46,6 +46,12 @@ struct WaveformRow {
   UtcNs end;
 };
 
+/// From a session on, a calibration was in force.
+struct CalibrationRow {
+  std::int64_t session = 0;
+  CalibrationInForce calibration;  ///< an empty text: from here on none
+};
+
 /// How far back detail of one sort was dropped.
 struct PrunedDetail {
   std::string what;
@@ -79,17 +85,27 @@ class LogbookReader {
   /// The site file in force at `at` (the last one before it, else the first); nothing if the logbook holds
   /// none.
   [[nodiscard]] Result<std::optional<std::string>> settings(std::optional<UtcNs> at) const;
+  /// The text of the calibration file in force at `at`: that of the session which had begun last by then (at
+  /// the end, if no time is given). Empty if the sensors had none.
+  [[nodiscard]] Result<std::string> calibration(std::optional<UtcNs> at) const;
+  /// Every change of it, in the order in which they were made. A session's is that of the last row with its
+  /// number or a lower one.
+  [[nodiscard]] Result<std::vector<CalibrationRow>> calibrations() const;
   [[nodiscard]] Result<std::vector<Loss>> losses() const;
   [[nodiscard]] Result<std::vector<PrunedDetail>> pruned() const;
 
  private:
-  LogbookReader(Database database, bool unchanging)
-      : database_(std::move(database)), unchanging_(unchanging) {}
+  LogbookReader(Database database, bool unchanging, std::int64_t version)
+      : database_(std::move(database)), unchanging_(unchanging), version_(version) {}
+  /// A logbook of version 1, which only a writer brings forward, has other names and lacks some columns.
+  [[nodiscard]] Result<Statement> prepare(std::string sql) const;
+  [[nodiscard]] bool has_calibrations() const { return version_ >= 2; }
   [[nodiscard]] Status each(const std::string& sql, const Period& period, const char* table,
                             const std::function<bool(const Statement&)>& take) const;
 
   Database database_;
   bool unchanging_ = false;  ///< opened as a file that nobody writes
+  std::int64_t version_;
 };
 
 }  // namespace tramline::storage

@@ -146,7 +146,7 @@ struct LogbookWriter::Inside {
 
   Statement insert_session, end_session, insert_coverage, extend_coverage, end_coverage, put_event,
       put_aggregate, put_frequency, put_regulator_interval, put_correction, insert_waveform, insert_trace,
-      insert_clock_change, last_settings, insert_settings, insert_loss;
+      insert_clock_change, last_settings, insert_settings, last_calibration, insert_calibration, insert_loss;
 
   Inside(WriterLock taken, Database opened) : lock(std::move(taken)), database(std::move(opened)) {}
 
@@ -162,7 +162,7 @@ struct LogbookWriter::Inside {
   Status store(const Correction& correction, const Place& at);
   Status store(const Waveform& waveform, const Place& at);
   Status store(const ClockChange& change, const Place& at);
-  Status store(const SettingsInForce& settings, const Place& at);
+  Status store_text(UtcNs from, const std::string& text, Statement& last, Statement& insert, const Place& at);
   Status store(const Loss& loss);
   Result<std::int64_t> drop(const char* table, const std::string& condition, UtcNs before);
   Result<double> used_bytes() const;
@@ -226,6 +226,8 @@ Status LogbookWriter::Inside::prepare() {
        "VALUES(?,?,?,?,?,?)"},
       {&last_settings, "SELECT text FROM settings ORDER BY id DESC LIMIT 1"},
       {&insert_settings, "INSERT INTO settings(session,from_ns,text) VALUES(?,?,?)"},
+      {&last_calibration, "SELECT text FROM calibration ORDER BY id DESC LIMIT 1"},
+      {&insert_calibration, "INSERT INTO calibration(session,from_ns,text) VALUES(?,?,?)"},
       {&insert_loss, "INSERT INTO loss(at_ns,what,count) VALUES(?,?,?)"},
   };
   for (const auto& [into, sql] : all) {
@@ -430,7 +432,10 @@ Status LogbookWriter::Inside::store_any(const Record& record, Place& at) {
   if (const auto* correction = std::get_if<Correction>(&record)) return store(*correction, at);
   if (const auto* waveform = std::get_if<Waveform>(&record)) return store(*waveform, at);
   if (const auto* change = std::get_if<ClockChange>(&record)) return store(*change, at);
-  if (const auto* settings = std::get_if<SettingsInForce>(&record)) return store(*settings, at);
+  if (const auto* settings = std::get_if<SettingsInForce>(&record))
+    return store_text(settings->from, settings->text, last_settings, insert_settings, at);
+  if (const auto* calibration = std::get_if<CalibrationInForce>(&record))
+    return store_text(calibration->from, calibration->text, last_calibration, insert_calibration, at);
   return store(std::get<Loss>(record));
 }
 
@@ -555,18 +560,17 @@ Status LogbookWriter::Inside::store(const ClockChange& change, const Place& at) 
   return insert_clock_change.run();
 }
 
-Status LogbookWriter::Inside::store(const SettingsInForce& settings, const Place& at) {
-  const auto row = last_settings.step();
+/// A row only if the text is not what the last one says; before the first, nothing is in force.
+Status LogbookWriter::Inside::store_text(UtcNs from, const std::string& text, Statement& last,
+                                         Statement& insert, const Place& at) {
+  const auto row = last.step();
   if (!row) return row.error();
-  const bool same = row.value() && last_settings.text(0) == settings.text;
+  const bool same = row.value() ? last.text(0) == text : text.empty();
   if (row.value()) {
-    if (auto done = last_settings.run(); !done) return done;
+    if (auto done = last.run(); !done) return done;
   }
   if (same) return kDone;
-  return insert_settings.bind(1, at.session)
-      .bind(2, settings.from.value)
-      .bind(3, std::string_view(settings.text))
-      .run();
+  return insert.bind(1, at.session).bind(2, from.value).bind(3, std::string_view(text)).run();
 }
 
 Status LogbookWriter::Inside::store(const Loss& loss) {

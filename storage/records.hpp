@@ -226,6 +226,12 @@ struct SettingsInForce {
   std::string text;
 };
 
+/// The calibration file in force from here on, as text; empty if the sensors have none.
+struct CalibrationInForce {
+  UtcNs from;
+  std::string text;
+};
+
 /// Something that was lost on the way to the logbook, so that nobody takes silence for peace.
 struct Loss {
   UtcNs at;
@@ -234,8 +240,8 @@ struct Loss {
   std::int64_t count = 0;
 };
 
-using Record =
-    std::variant<SessionBegin, SessionEnd, Event, Aggregate, Frequency, RegulatorInterval, Correction,
-                 CoverageBegin, CoverageProgress, CoverageEnd, Waveform, ClockChange, SettingsInForce, Loss>;
+using Record = std::variant<SessionBegin, SessionEnd, Event, Aggregate, Frequency, RegulatorInterval,
+                            Correction, CoverageBegin, CoverageProgress, CoverageEnd, Waveform, ClockChange,
+                            SettingsInForce, CalibrationInForce, Loss>;
 
 }  // namespace tramline::storage

@@ -168,6 +168,11 @@ ALTER TABLE event RENAME COLUMN clock_synchronised TO clock_trust;
 ALTER TABLE aggregate RENAME COLUMN clock_synchronised TO clock_trust;
 ALTER TABLE frequency RENAME COLUMN clock_synchronised TO clock_trust;
 ALTER TABLE clock_change RENAME COLUMN clock_synchronised TO clock_trust;
+CREATE TABLE calibration(
+  id INTEGER PRIMARY KEY,
+  session INTEGER NOT NULL REFERENCES session(id),
+  from_ns INTEGER NOT NULL,
+  text TEXT NOT NULL);
 )sql";
 
 constexpr std::array<Migration, 2> kMigrations = {{{kVersion1}, {kVersion2}}};

@@ -152,6 +152,7 @@ Result<Imported> run(const config::Site& site, acquire::Source& source, storage:
   records.emplace_back(storage::SessionBegin{std::string("tramline ") + kVersion, info.what, info.rate_hz,
                                              info.dated, info.begin});
   records.emplace_back(storage::SettingsInForce{info.begin, site.text});
+  records.emplace_back(storage::CalibrationInForce{info.begin, site.calibration.text});
   Pipeline pipeline(site, info, "import began");
   measure::Block block;
   Imported imported;

@@ -256,6 +256,60 @@ TEST_F(Logbook, TheSameSettingsAreKeptOnce) {
   EXPECT_EQ(reader().settings(UtcNs{0}).value(), "a");
 }
 
+TEST_F(Logbook, ACalibrationIsKeptWhenItChangesAndWhenItIsTakenAway) {
+  auto to = writer();
+  const auto session_at = [&](std::int64_t begin_s, const std::string& calibration) {
+    write(to, {SessionBegin{"test 1", "a source", 6400.0, true, UtcNs{begin_s * kSecond}},
+               CalibrationInForce{{begin_s * kSecond}, calibration}});
+  };
+  session_at(0, "");  // never calibrated: nothing to keep
+  EXPECT_TRUE(reader().calibrations().value().empty());
+  EXPECT_EQ(reader().calibration(std::nullopt).value(), "");
+  session_at(10, "first");
+  session_at(20, "first");
+  session_at(30, "");
+  session_at(40, "second");
+  const auto rows = reader().calibrations().value();
+  ASSERT_EQ(rows.size(), 3U);
+  EXPECT_EQ(rows[0].session, 2);
+  EXPECT_EQ(rows[0].calibration.from, UtcNs{10 * kSecond});
+  EXPECT_EQ(rows[0].calibration.text, "first");
+  EXPECT_EQ(rows[1].calibration.text, "");
+  EXPECT_EQ(rows[2].calibration.text, "second");
+  for (const auto& [at_s, text] : std::vector<std::pair<std::int64_t, std::string>>{
+           {5, ""}, {10, "first"}, {25, "first"}, {35, ""}, {99, "second"}})
+    EXPECT_EQ(reader().calibration(UtcNs{at_s * kSecond}).value(), text) << at_s;
+  EXPECT_EQ(reader().calibration(std::nullopt).value(), "second");
+}
+
+TEST_F(Logbook, TheImportOfAnOldRecordingDoesNotUndoTheCalibrationOfTheDaemonsTime) {
+  auto to = writer();
+  write(to, {SessionBegin{"daemon", "live", 6400.0, true, UtcNs{100 * kSecond}},
+             CalibrationInForce{{100 * kSecond}, "plant"}});
+  write(to, {SessionBegin{"import", "old", 6400.0, true, UtcNs{50 * kSecond}},
+             CalibrationInForce{{50 * kSecond}, ""}});
+  EXPECT_EQ(reader().calibration(UtcNs{200 * kSecond}).value(), "plant");
+  EXPECT_EQ(reader().calibration(UtcNs{60 * kSecond}).value(), "");
+}
+
+TEST_F(Logbook, ALogbookOfVersion1IsReadAsItIsAndBroughtForwardByItsWriter) {
+  {
+    auto opened = Database::open(path_, Database::Mode::read_write_create);
+    ASSERT_TRUE(opened);
+    ASSERT_TRUE(opened.value().execute("PRAGMA application_id=" + std::to_string(kApplicationId)));
+    ASSERT_TRUE(migrate(opened.value(), migrations().first(1)));
+    ASSERT_TRUE(opened.value().execute("INSERT INTO session VALUES(1,'old','a source',6400,1,0,'stopped')"));
+  }
+  EXPECT_EQ(reader().calibration(std::nullopt).value(), "");
+  EXPECT_TRUE(reader().calibrations().value().empty());
+  EXPECT_EQ(reader().sessions().value().size(), 1U);
+  auto to = writer();
+  write(to, session());
+  write(to, {CalibrationInForce{{7}, "c"}});
+  EXPECT_EQ(reader().calibration(std::nullopt).value(), "c");
+  EXPECT_EQ(reader().sessions().value().size(), 2U);
+}
+
 // ---- files that are no logbook -------------------------------------------------------------------------
 
 TEST_F(Logbook, AFileThatIsNotSqliteIsRefusedAndLeftAlone) {
