@@ -135,6 +135,8 @@ MeterAnswer ModbusLink::ask(const MeterRequest& request, std::uint16_t* words) {
   constexpr int kExceptionBytes = 2;  // function and code
   switch (error) {
     case ETIMEDOUT:
+    case EAGAIN:  // a port that cannot take the question now
+    case EINTR:
       return MeterAnswer::late;
     case EMBBADCRC:
     case EMBBADDATA:

@@ -1,6 +1,7 @@
 #include "daemon/acquire/polled_meter.hpp"
 
 #include <algorithm>
+#include <cassert>
 #include <cmath>
 #include <cstdio>
 #include <optional>
@@ -63,9 +64,8 @@ class PolledMeter : public Device {
       stamp(asked_);
       const std::int64_t wait_ns = due_ns_ - asked_.monotonic_ns;
       if (wait_ns > 0) {
-        if (!link_->wait(std::min<std::chrono::nanoseconds>(std::chrono::nanoseconds(wait_ns), at_most)))
-          return gone();
-        return false;
+        const std::chrono::nanoseconds wait(wait_ns);
+        return link_->wait(std::min<std::chrono::nanoseconds>(wait, at_most)) ? Result<bool>(false) : gone();
       }
     }
     // One question a call, so that no call takes longer than one answer.

@@ -10,6 +10,7 @@
 #include <fstream>
 #include <iterator>
 #include <memory>
+#include <optional>
 #include <string>
 #include <utility>
 
@@ -24,6 +25,7 @@ constexpr unsigned kLongestBufferUs = 2'000'000;
 constexpr double kMostAtOnceS = 0.2;
 constexpr unsigned kMostChannels = 64;
 constexpr double kRateAsAskedHz = 0.5;
+constexpr std::int64_t kOldestStampNs = 60 * kNsPerSecond;  // what is older is of another clock
 
 struct NamedFormat {
   snd_pcm_format_t alsa;
@@ -51,10 +53,9 @@ Held<T> made(int (*make)(T**)) {
 }
 
 /// ALSA's own words would go to the terminal; ours say the same where it is read.
-void keep_quiet(const char*, int, const char*, int, const char*, ...) {}
-
-std::int64_t ns_of(const snd_htimestamp_t& time) {
-  return std::int64_t{time.tv_sec} * kNsPerSecond + time.tv_nsec;
+void say_nothing(const char*, int, const char*, int, const char*, ...) {}
+void keep_alsa_quiet() {
+  [[maybe_unused]] static const int set = snd_lib_error_set_handler(say_nothing);
 }
 
 std::string devices_there_are() {
@@ -72,7 +73,7 @@ class Sound : public Device {
       : settings_(settings), what_("sound interface " + settings.device), channels_(std::move(channels)) {}
 
   Result<StreamInfo> open(const std::atomic<bool>& stop) override {
-    snd_lib_error_set_handler(keep_quiet);
+    keep_alsa_quiet();
     snd_pcm_t* pcm = nullptr;
     if (const int error =
             snd_pcm_open(&pcm, settings_.device.c_str(), SND_PCM_STREAM_CAPTURE, SND_PCM_NONBLOCK);
@@ -127,11 +128,10 @@ class Sound : public Device {
     format_ = format->ours;
     if (auto done = choose_channels(params); !done) return done;
 
-    rate_hz_ = static_cast<unsigned>(std::lround(settings_.rate_hz));
-    if (const int error = snd_pcm_hw_params_set_rate_near(pcm, params, &rate_hz_, nullptr); error < 0)
+    auto whole_hz = static_cast<unsigned>(std::lround(settings_.rate_hz));
+    if (const int error = snd_pcm_hw_params_set_rate_near(pcm, params, &whole_hz, nullptr); error < 0)
       return cannot_do("be given a sample rate", error);
-    if (auto sound = check_rate(rate_hz_, what_); !sound) return sound;
-
+    // The period first: the shorter it is, the sooner frames come; the buffer is as long as that leaves it.
     unsigned period_us = kPeriodUs;
     if (const int error = snd_pcm_hw_params_set_period_time_near(pcm, params, &period_us, nullptr); error < 0)
       return cannot_do("be given a period", error);
@@ -140,17 +140,14 @@ class Sound : public Device {
       return cannot_do("be given a buffer", error);
     if (const int error = snd_pcm_hw_params(pcm, params); error < 0) return cannot_do("be set up", error);
 
-    // Of a divided clock the rate is a fraction.
+    // Of a divided clock the rate is a fraction; not every driver says it.
     unsigned numerator = 0;
     unsigned denominator = 0;
-    exact_rate_hz_ =
-        snd_pcm_hw_params_get_rate_numden(params, &numerator, &denominator) == 0 && denominator > 0
-            ? static_cast<double>(numerator) / denominator
-            : rate_hz_;
-    snd_pcm_uframes_t buffer_frames = 0;
-    snd_pcm_hw_params_get_buffer_size(params, &buffer_frames);
-    most_frames_ = std::max<snd_pcm_uframes_t>(
-        1, std::min(buffer_frames, static_cast<snd_pcm_uframes_t>(kMostAtOnceS * exact_rate_hz_)));
+    const bool exact =
+        snd_pcm_hw_params_get_rate_numden(params, &numerator, &denominator) == 0 && denominator > 0;
+    rate_hz_ = exact ? static_cast<double>(numerator) / denominator : whole_hz;
+    if (auto sound = check_rate(rate_hz_, what_); !sound) return sound;
+    most_frames_ = static_cast<snd_pcm_uframes_t>(kMostAtOnceS * rate_hz_);
     buffer_.resize(most_frames_ * width_ * bytes_a_sample(format_));
     return kDone;
   }
@@ -163,7 +160,9 @@ class Sound : public Device {
     auto columns = columns_for(channels_, std::vector<std::string>(std::min(most, kMostChannels)), what_);
     if (!columns) return columns.error();
     columns_ = std::move(columns).value();
-    unsigned count = static_cast<unsigned>(*std::max_element(columns_.begin(), columns_.end())) + 1;
+    unsigned count = 1;
+    for (const std::size_t column : columns_)
+      count = std::max(count, static_cast<unsigned>(column) + 1);
     int error = snd_pcm_hw_params_set_channels_min(pcm_.get(), params, &count);
     if (error == 0) error = snd_pcm_hw_params_set_channels_first(pcm_.get(), params, &count);
     if (error < 0) return cannot_do("give " + std::to_string(count) + " channels", error);
@@ -189,13 +188,13 @@ class Sound : public Device {
     StreamInfo info;
     char figures[96];
     std::snprintf(figures, sizeof figures, ", %zu channels, %s, %g Hz", width_,
-                  std::string(name_of(format_)).c_str(), exact_rate_hz_);
+                  std::string(name_of(format_)).c_str(), rate_hz_);
     info.what = what_ + figures;
-    info.rate_hz = exact_rate_hz_;
-    if (std::abs(exact_rate_hz_ - settings_.rate_hz) > kRateAsAskedHz) {
+    info.rate_hz = rate_hz_;
+    if (std::abs(rate_hz_ - settings_.rate_hz) > kRateAsAskedHz) {
       char rates[96];
-      std::snprintf(rates, sizeof rates, "the interface gives %g Hz where %g Hz were asked for",
-                    exact_rate_hz_, settings_.rate_hz);
+      std::snprintf(rates, sizeof rates, "the interface gives %g Hz where %g Hz were asked for", rate_hz_,
+                    settings_.rate_hz);
       info.remarks.emplace_back(rates);
     }
     info.remarks.emplace_back(
@@ -210,42 +209,40 @@ class Sound : public Device {
 
   // ---- time
 
+  /// What the driver stamps, if it does and by the monotonic clock.
+  [[nodiscard]] std::optional<std::int64_t> driver_ns(void (*which)(const snd_pcm_status_t*,
+                                                                    snd_htimestamp_t*),
+                                                      std::int64_t now_ns) const {
+    if (!driver_stamps_) return std::nullopt;
+    snd_htimestamp_t time{};
+    which(status_.get(), &time);
+    const std::int64_t ns = std::int64_t{time.tv_sec} * kNsPerSecond + time.tv_nsec;
+    if (ns <= 0 || ns > now_ns || now_ns - ns > kOldestStampNs) return std::nullopt;
+    return ns;
+  }
+
   /// When the converter was last started; now, if the driver does not say.
   std::int64_t started_ns() {
     Arrival now;
     stamp(now);
-    if (!driver_stamps_ || snd_pcm_status(pcm_.get(), status_.get()) < 0) return now.monotonic_ns;
-    snd_htimestamp_t time{};
-    snd_pcm_status_get_trigger_htstamp(status_.get(), &time);
-    return believable(ns_of(time), now.monotonic_ns) ? ns_of(time) : now.monotonic_ns;
+    if (snd_pcm_status(pcm_.get(), status_.get()) < 0) return now.monotonic_ns;
+    return driver_ns(snd_pcm_status_get_trigger_htstamp, now.monotonic_ns).value_or(now.monotonic_ns);
   }
 
-  /// A driver's stamp may be missing or of another clock.
-  static bool believable(std::int64_t ns, std::int64_t now_ns) {
-    return ns <= now_ns && now_ns - ns < 2 * kNsPerSecond;
-  }
-
-  /// Stamps the last frame in `arrival` with the driver's time of its position in the buffer, `behind` frames
-  /// of which had not yet been read.
+  /// Stamps the last frame in `arrival` with the driver's time of its place in the buffer, of which `behind`
+  /// frames are still to be read.
   ///
-  /// What counts is a latency that is always the same. The driver stamps its position when it learns it, in
-  /// the interrupt, so the program's own delays are not in it. The delay that snd_pcm_delay() adds for the
-  /// codec is left out: it is constant at best and guessed at worst.
+  /// What counts is a latency that is always the same. The driver stamps its place when it learns it, in the
+  /// interrupt, so the program's own delays are not in it. The delay that snd_pcm_delay() adds for the codec
+  /// is left out: it is constant at best and guessed at worst.
   void stamp_last_frame(Arrival& arrival, std::int64_t behind) {
     stamp(arrival);
-    if (driver_stamps_) {
-      snd_htimestamp_t time{};
-      snd_pcm_status_get_htstamp(status_.get(), &time);
-      const auto position_ns = ns_of(time) - std::llround(static_cast<double>(behind) * 1e9 / exact_rate_hz_);
-      if (believable(position_ns, arrival.monotonic_ns)) {
-        arrival.utc_ns -= arrival.monotonic_ns - position_ns;
-        arrival.monotonic_ns = position_ns;
-      }
-    }
-    const std::int64_t back_ns = std::max<std::int64_t>(0, last_ns_ - arrival.monotonic_ns);
-    arrival.monotonic_ns += back_ns;
-    arrival.utc_ns += back_ns;
-    last_ns_ = arrival.monotonic_ns;
+    std::int64_t last_ns = arrival.monotonic_ns;
+    if (const auto place_ns = driver_ns(snd_pcm_status_get_htstamp, arrival.monotonic_ns))
+      last_ns = *place_ns - std::llround(static_cast<double>(behind) * 1e9 / rate_hz_);
+    last_ns_ = std::max(last_ns_, last_ns);  // time does not go back
+    arrival.utc_ns += last_ns_ - arrival.monotonic_ns;
+    arrival.monotonic_ns = last_ns_;
   }
 
   // ---- trouble
@@ -266,7 +263,7 @@ class Sound : public Device {
   /// driver's. What is left shows as lateness, which the fit of the clock sees to.
   void count_lost(measure::GapCause cause) {
     const std::int64_t started = started_ns();
-    const double lost = static_cast<double>(started - last_ns_) / 1e9 * exact_rate_hz_;
+    const double lost = static_cast<double>(started - last_ns_) / 1e9 * rate_hz_;
     // At least one: what comes next does not follow on what came before.
     next_ += std::max<std::int64_t>(1, std::llround(lost));
     last_ns_ = std::max(last_ns_, started);
@@ -312,8 +309,7 @@ class Sound : public Device {
   SoundFormat format_ = SoundFormat::s16;
   std::size_t width_ = 0;             // channels of the device
   std::vector<std::size_t> columns_;  // of the device, by the site's channels
-  unsigned rate_hz_ = 0;
-  double exact_rate_hz_ = 0.0;
+  double rate_hz_ = 0.0;
   bool driver_stamps_ = false;
   snd_pcm_uframes_t most_frames_ = 0;
   std::vector<std::uint8_t> buffer_;
