@@ -50,10 +50,13 @@ double degrees(const Phasor& phasor) {
   return std::arg(phasor) * 180.0 / std::numbers::pi;
 }
 
+/// Smallest difference of two values that came: a converter's step, if it has one worth the name.
 double smallest_step(std::span<const float> volts) {
+  std::vector<float> sorted(volts.begin(), volts.end());
+  std::sort(sorted.begin(), sorted.end());
   float least = std::numeric_limits<float>::infinity();
-  for (std::size_t i = 1; i < volts.size(); ++i) {
-    const float step = std::abs(volts[i] - volts[i - 1]);
+  for (std::size_t i = 1; i < sorted.size(); ++i) {
+    const float step = sorted[i] - sorted[i - 1];
     if (step > 0.0F) least = std::min(least, step);
   }
   return std::isinf(least) ? 0.0 : static_cast<double>(least);

@@ -48,7 +48,7 @@ struct ChannelFigures {
   std::optional<LimitFigures> upper_limit;
   std::optional<LimitFigures> lower_limit;
   bool constant = false;  ///< the same number in every sample
-  double step_v = 0.0;    ///< smallest difference of neighbours that was seen: at least the converter's step
+  double step_v = 0.0;  ///< smallest difference of two values that came: the converter's step, or a multiple
 };
 
 /// Input and output of one phase.

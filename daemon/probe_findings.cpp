@@ -34,6 +34,7 @@ constexpr double kRatioTolerance = 0.02;  // sensors that were not calibrated ye
 constexpr double kSameRatio = 0.0005;
 constexpr double kSameNoise = 0.9;
 constexpr double kImpossiblePct = 125.0;  // must be put right even if it is the supply itself
+constexpr double kPlainlyOff = 1.25;      // a factor that a supply's own ups and downs do not hide
 constexpr double kClean = 0.98;           // share of the fundamental in the r.m.s. value
 
 // A sine of peak A cut to half waves: mean A/pi, r.m.s. A/2; to full waves: mean 2A/pi, r.m.s. A/sqrt(2).
@@ -112,6 +113,7 @@ class Judge {
     skews();
     for (const PairFigures& pair : figures_.pairs)
       both_sides(pair);
+    same_signals();
     for (std::size_t c = 0; c < figures_.channels.size(); ++c)
       level(c);
     not_judged();
@@ -148,10 +150,9 @@ class Judge {
   void length() {
     if (figures_.readings || figures_.longest_stretch_s >= kLeastStretchS) return;
     find(Severity::must_be_fixed, Matter::too_short, {},
-         fmt::format(
-             "the longest stretch without a gap is {:.2g} s; half a second at least is needed to judge a "
-             "waveform, so most of the figures are not to be trusted.",
-             figures_.longest_stretch_s),
+         fmt::format("the longest stretch without a gap is {:.2g} s; half a second at least is needed to "
+                     "judge a waveform, so most of the figures are not to be trusted.",
+                     figures_.longest_stretch_s),
          figures_.missing.gaps > 0 ? "Find out first why samples are missing; then probe again."
                                    : "Give a longer recording, or probe for longer.");
   }
@@ -192,8 +193,7 @@ class Judge {
            fmt::format("the {} gives the same number in every sample, {} V: no signal arrives.", name(c),
                        plain(channel.dc_v != 0.0 ? channel.dc_v : channel.rms_v)),
            "See that source_channel names the right channel, that the sensor is powered, and that its "
-           "converter "
-           "runs.");
+           "converter runs.");
       return;
     }
     if (alive(c)) return;
@@ -209,10 +209,9 @@ class Judge {
            "source_channel are the right ones.");
     } else {
       find(Severity::must_be_fixed, Matter::scale, {c},
-           fmt::format(
-               "the {} reads {}, a clean sine. {} A sensor that is not connected and picks up hum may look "
-               "alike.",
-               name(c), volts_and_pct(channel.rms_v), would_fit(c, fits)),
+           fmt::format("the {} reads {}, a clean sine. {} A sensor that is not connected and picks up hum "
+                       "may look alike.",
+                       name(c), volts_and_pct(channel.rms_v), would_fit(c, fits)),
            with_scale(c, fits));
     }
   }
@@ -230,24 +229,22 @@ class Judge {
            fmt::format("the {} was at its limit {} times, {:.3g} % of the time; its peak reads {} V.",
                        name(c), channel.over_range_spans, 100.0 * share, plain(channel.peak_v)),
            "Use a sensor, a divider or a converter range with more room: a swell must fit as well, so the "
-           "limit "
-           "should lie at 1.5 times the nominal peak at least. Correct range_v if it is declared too low.");
+           "limit should lie at 1.5 times the nominal peak at least. Correct range_v if it is declared too "
+           "low.");
       return;
     }
     const bool half_wave = std::abs(std::abs(channel.dc_v) / channel.rms_v - kHalfWave) < kRectifiedWithin;
     if (half_wave || (!channel.upper_limit && !channel.lower_limit)) return;
     const LimitFigures& limit = channel.upper_limit ? *channel.upper_limit : *channel.lower_limit;
     const bool both = channel.upper_limit && channel.lower_limit;
-    find(
-        Severity::must_be_fixed, Matter::clipping, {c},
-        fmt::format(
-            "the {} is cut off at {} V{}: {} times up to {} samples in a row stood at exactly that value, a "
-            "limit that nobody declared.",
-            name(c), plain(limit.at_v),
-            both ? fmt::format(" and at {} V", plain(channel.lower_limit->at_v)) : std::string(), limit.runs,
-            limit.longest),
-        "Turn down the gain before the converter, or use a divider or a converter range with more room; then "
-        "declare the limit as range_v.");
+    find(Severity::must_be_fixed, Matter::clipping, {c},
+         fmt::format("the {} is cut off at {} V{}: {} times up to {} samples in a row stood at exactly that "
+                     "value, a limit that nobody declared.",
+                     name(c), plain(limit.at_v),
+                     both ? fmt::format(" and at {} V", plain(channel.lower_limit->at_v)) : std::string(),
+                     limit.runs, limit.longest),
+         "Turn down the gain before the converter, or use a divider or a converter range with more room; "
+         "then declare the limit as range_v.");
   }
 
   void rectified(std::size_t c) {
@@ -268,16 +265,14 @@ class Judge {
              full ? fmt::format("the frequency is {:.2f} Hz, twice the nominal", channel.wave->hz)
                   : fmt::format("the second harmonic is {:.3g} % (it has 42.4 %)", channel.wave->second_pct)),
          full ? "A rectifier stands before the converter. Use a sensor that gives the alternating wave "
-                "itself, about "
-                "a middle voltage that the converter can take."
+                "itself, about a middle voltage that the converter can take."
               : "The converter takes one sign only, or a rectifier stands before it. Shift the sensor's wave "
-                "to the "
-                "middle of the converter's range, or use a converter for both signs.");
+                "to the middle of the converter's range, or use a converter for both signs.");
   }
 
   void dc(std::size_t c) {
     const ChannelFigures& channel = of(c);
-    if (figures_.readings || !alive(c) || rectified_[c]) return;
+    if (figures_.readings || !alive(c) || rectified_[c] || has_found(Matter::clipping, c)) return;
     const double share_pct = 100.0 * std::abs(channel.dc_v) / channel.rms_v;
     if (pct(std::abs(channel.dc_v)) <= kDcLookPct) return;
     find(share_pct > kDcMustPct ? Severity::must_be_fixed : Severity::look_at_it, Matter::dc, {c},
@@ -291,7 +286,8 @@ class Judge {
   void noise(std::size_t c) {
     const ChannelFigures& channel = of(c);
     if (!alive(c) || !channel.wave || rectified_[c]) return;
-    const double noise_pct = pct(channel.wave->noise_v);
+    // Of a reading that is far too high, because its scale is, so is the noise.
+    const double noise_pct = 100.0 * channel.wave->noise_v / std::max(site_.nominal_v, channel.rms_v);
     if (noise_pct <= kResolutionPct) return;
     const double step_pct = pct(channel.step_v);
     find(noise_pct > kNoiseMustPct ? Severity::must_be_fixed : Severity::look_at_it, Matter::noise, {c},
@@ -303,8 +299,7 @@ class Judge {
          step_pct > kResolutionPct
              ? "Use more of the converter's range: a smaller divider, more gain, or more bits."
              : "See to the sensor's supply, screening and earth of the signal lead, and that the signal uses "
-               "most of "
-               "the converter's range.");
+               "most of the converter's range.");
   }
 
   // ---- is the stream sound
@@ -347,14 +342,12 @@ class Judge {
     const bool must = std::abs(off_ppm) > std::max(kRateMustPpm, rate.error_ppm);
     find(must ? Severity::must_be_fixed : Severity::look_at_it, Matter::rate, {},
          fmt::format("the device takes {:.2f} samples a second by this computer's clock, {:+.0f} ppm against "
-                     "the {} it "
-                     "states (known to {:.0f} ppm).",
+                     "the {} it states (known to {:.0f} ppm).",
                      *rate.measured_hz, off_ppm, plain(rate.nominal_hz), rate.error_ppm),
          must ? "Correct the rate that the device states, or its divider: frequency and durations follow "
                 "from it."
               : "The record's time follows the measured rate. Worth a look if the device claims a crystal: "
-                "100 ppm are "
-                "more than one has.");
+                "100 ppm are more than one has.");
   }
 
   void frequency() {
@@ -396,8 +389,7 @@ class Judge {
            fmt::format("the {} has {:.3f} Hz and the {} {:.3f} Hz: they do not come from one supply.",
                        name(cases[0].channels[0]), cases[0].hz, name(cases[1].channels[0]), cases[1].hz),
            "See that both sensors are at the same regulator, and that nothing on its output makes a voltage "
-           "of its "
-           "own.");
+           "of its own.");
     }
   }
 
@@ -413,25 +405,22 @@ class Judge {
     if (near_to(other_hz)) {
       find(Severity::must_be_fixed, Matter::frequency, channels,
            what + ": the other of the two mains frequencies.",
-           fmt::format(
-               "Set frequency_hz to {}. Where the supply is known to have {} Hz, the sample rate is stated "
-               "wrong, {:.3g} times too high or low.",
-               plain(other_hz), plain(site_.nominal_hz),
-               std::max(hz, site_.nominal_hz) / std::min(hz, site_.nominal_hz)));
+           fmt::format("Set frequency_hz to {}. Where the supply is known to have {} Hz, the sample rate is "
+                       "stated wrong, {:.3g} times too high or low.",
+                       plain(other_hz), plain(site_.nominal_hz),
+                       std::max(hz, site_.nominal_hz) / std::min(hz, site_.nominal_hz)));
     } else if (near_to(2.0 * site_.nominal_hz) || near_to(0.5 * site_.nominal_hz)) {
       find(Severity::must_be_fixed, Matter::frequency, channels,
            fmt::format("{}: {}, and it is no rectified wave.", what,
                        hz > site_.nominal_hz ? "twice the nominal" : "half the nominal"),
            "It would fit if the sample rate were stated wrong by 2, as when two channels are counted as one. "
-           "See to "
-           "the rate and the number of channels of the device.");
+           "See to the rate and the number of channels of the device.");
     } else {
       const bool must = std::abs(off_pct) > kFrequencyMustPct;
       find(must ? Severity::must_be_fixed : Severity::look_at_it, Matter::frequency, channels,
            fmt::format("{}, {:+.2f} %.", what, off_pct),
            "A generator may run so; a public grid does not. Compare with a meter that shows frequency; if "
-           "that is "
-           "right, the sample rate is stated wrong.");
+           "that is right, the sample rate is stated wrong.");
     }
   }
 
@@ -476,10 +465,9 @@ class Judge {
       *angles_[c[flipped]] += 180.0;
       if (turns(-120.0) || turns(120.0)) {
         find(Severity::must_be_fixed, Matter::reversed, {c[flipped]},
-             fmt::format(
-                 "the {} is the other way round: it stands 60 degrees from its neighbours where 120 are "
-                 "expected.",
-                 name(c[flipped])),
+             fmt::format("the {} is the other way round: it stands 60 degrees from its neighbours where 120 "
+                         "are expected.",
+                         name(c[flipped])),
              fmt::format("Exchange the two leads of the sensor, or {}.", turned(c[flipped])));
       } else {
         *angles_[c[flipped]] -= 180.0;
@@ -529,8 +517,7 @@ class Judge {
            fmt::format("on the {} side{} L3 follows L1 and L2 follows L3: the phases turn the other way.",
                        name_of(side), other ? " as on the output" : ""),
            "Nothing measured here depends on it. Where motors do, have the phase order tested; else exchange "
-           "the "
-           "phases of two channels in the site file.");
+           "the phases of two channels in the site file.");
     }
   }
 
@@ -573,19 +560,15 @@ class Judge {
                          what, fmt::format("{}/{}", std::abs(*apart), channels), channels,
                          std::abs(*apart) == channels ? ", or one channel a whole sample late" : ""),
              "R.m.s. values, events and frequency are right with it. Only a comparison of the two waveforms, "
-             "sample by "
-             "sample, is not.");
+             "sample by sample, is not.");
       } else if (size > kSkewLook) {
         find(Severity::look_at_it, Matter::skew, {pair.input, pair.output},
-             fmt::format(
-                 "{}; a servo regulator turns the phase by a degree or two at most{}.", what,
-                 std::abs(size - 30.0) < 5.0
-                     ? ". 30 degrees are between phase to neutral and phase to phase, or across a star-delta "
-                       "transformer"
-                     : ""),
+             fmt::format("{}; a servo regulator turns the phase by a degree or two at most{}.", what,
+                         std::abs(size - 30.0) < 5.0 ? ". 30 degrees are between phase to neutral and phase "
+                                                       "to phase, or across a star-delta transformer"
+                                                     : ""),
              "See to filters that differ, to channels of two converters that are not started together, and "
-             "to where "
-             "each sensor is connected.");
+             "to where each sensor is connected.");
       }
     }
   }
@@ -602,18 +585,8 @@ class Judge {
            "See to source_channel of both, and to the converter's inputs.");
       return;
     }
-    if (std::abs(pair.ratio - 1.0) < kSameRatio && pair.noise_correlation.value_or(0.0) > kSameNoise) {
-      find(
-          Severity::look_at_it, Matter::same_signal, both,
-          fmt::format(
-              "the {} and the {} read the same to {:.2g} %, and so does their noise (correlation {:.2f}). "
-              "Either the regulator rests at a ratio of 1 or is bypassed, or both sensors are on one side of "
-              "it; these figures cannot tell which.",
-              in, out, std::max(0.01, 100.0 * std::abs(pair.ratio - 1.0)), *pair.noise_correlation),
-          "Probe again when the supply has moved by a few percent. If both readings moved alike, find out "
-          "which "
-          "sensor is on the wrong side.");
-    }
+    if (std::abs(pair.ratio - 1.0) < kSameRatio && pair.noise_correlation.value_or(0.0) > kSameNoise)
+      same_.push_back(pair);
     if (!site_.regulator) return;
     const auto& regulator = *site_.regulator;
     const auto band = site_.tolerated_band();
@@ -626,21 +599,50 @@ class Judge {
     const bool band_says_so = band.holds(of(pair.input).rms_v) && !band.holds(of(pair.output).rms_v);
     if (inverse && (!possible || band_says_so)) {
       find(possible ? Severity::look_at_it : Severity::must_be_fixed, Matter::swapped, both,
-           fmt::format(
-               "input and output would fit better the other way round: the {} reads {} V, the {} {} V (band "
-               "{:.1f} to {:.1f} V). U_out/U_in is {:.3f}, {} the declared {:.3f} to {:.3f}; its inverse "
-               "{:.3f} "
-               "is within.",
-               in, plain(of(pair.input).rms_v), out, plain(of(pair.output).rms_v), regulator.band_low_v,
-               regulator.band_high_v, pair.ratio, possible ? "within" : "outside", regulator.ratio_min,
-               regulator.ratio_max, 1.0 / pair.ratio),
+           fmt::format("input and output would fit better the other way round: the {} reads {} V, the {} {} "
+                       "V (band {:.1f} to {:.1f} V). U_out/U_in is {:.3f}, {} the declared {:.3f} to {:.3f}; "
+                       "its inverse {:.3f} is within.",
+                       in, plain(of(pair.input).rms_v), out, plain(of(pair.output).rms_v),
+                       regulator.band_low_v, regulator.band_high_v, pair.ratio,
+                       possible ? "within" : "outside", regulator.ratio_min, regulator.ratio_max,
+                       1.0 / pair.ratio),
            possible ? "See which sensor is on which side. It would fit a regulator that does not work, too."
                     : "See which sensor is on which side; if they are exchanged, exchange side or "
-                      "source_channel of the "
-                      "two channels.");
-    } else if (!possible && !has_found(Matter::scale, pair.input) && !has_found(Matter::scale, pair.output)) {
-      impossible_.push_back(pair);
+                      "source_channel of the two channels.");
     }
+    // Where the band does not say so as well, a wrong scale may explain the ratio as well.
+    if (!possible && !band_says_so) impossible_.push_back(pair);
+  }
+
+  void same_signals() {
+    if (same_.empty()) return;
+    std::vector<std::size_t> channels;
+    double apart = 0.0;
+    double correlation = 1.0;
+    for (const PairFigures& pair : same_) {
+      channels.push_back(pair.input);
+      channels.push_back(pair.output);
+      apart = std::max(apart, std::abs(pair.ratio - 1.0));
+      correlation = std::min(correlation, *pair.noise_correlation);
+    }
+    const bool in_band = std::all_of(same_.begin(), same_.end(), [&](const PairFigures& pair) {
+      return !site_.regulator || site_.tolerated_band().holds(of(pair.output).rms_v);
+    });
+    std::string phases;
+    for (const PairFigures& pair : same_) {
+      phases += phases.empty() ? " of " : ", ";
+      phases += tramline::name_of(of(pair.input).channel.phase);
+    }
+    find(Severity::look_at_it, Matter::same_signal, std::move(channels),
+         fmt::format(
+             "input and output{} read the same to {:.2g} %, and so does their noise (correlation {:.2f}). {}",
+             site_.phases > 1 ? phases : std::string(), std::max(0.01, 100.0 * apart), correlation,
+             in_band ? "Either the regulator rests at a ratio of 1 or is bypassed, or both sensors are on "
+                       "one side of it; these figures cannot tell which."
+                     : "The output is out of its band at that: the regulator is bypassed or stands still, or "
+                       "both sensors are on one side of it; these figures cannot tell which."),
+         "Probe again when the supply has moved by a few percent. If both readings moved alike, find out "
+         "which sensor is on the wrong side.");
   }
 
   [[nodiscard]] bool in_impossible_pair(std::size_t c) const {
@@ -651,14 +653,19 @@ class Judge {
   /// Is the voltage what it ought to be, or would it be with a usual factor?
   void level(std::size_t c) {
     const ChannelFigures& channel = of(c);
-    if (!alive(c) || rectified_[c] || has_found(Matter::swapped, c) || has_found(Matter::clipping, c)) return;
+    if (!alive(c) || rectified_[c] || has_found(Matter::clipping, c) || has_found(Matter::same_signal, c))
+      return;
+    if (has_found(Matter::swapped, c) && !in_impossible_pair(c)) return;
     const bool regulated = site_.regulator && channel.channel.side == Side::output;
     const auto expected =
         regulated ? site_.tolerated_band() : config::Site::Band{0.9 * site_.nominal_v, 1.1 * site_.nominal_v};
     const double aim = regulated ? site_.regulator->target_v : site_.nominal_v;
-    const auto fits = expected.holds(channel.rms_v)
-                          ? std::vector<UsualFactor>{}
-                          : fitting(channel.rms_v, expected.low_v, expected.high_v, aim);
+    auto fits = expected.holds(channel.rms_v) ? std::vector<UsualFactor>{}
+                                              : fitting(channel.rms_v, expected.low_v, expected.high_v, aim);
+    // A supply's own ups and downs hide the small factors; a regulator's output has a band to tell them by.
+    if (!regulated)
+      std::erase_if(
+          fits, [](const UsualFactor& f) { return std::abs(std::log(f.factor)) < std::log(kPlainlyOff); });
     const bool must = pct(channel.rms_v) > kImpossiblePct || in_impossible_pair(c);
     if (!fits.empty()) {
       find(must ? Severity::must_be_fixed : Severity::look_at_it, Matter::scale, {c},
@@ -670,26 +677,25 @@ class Judge {
            fmt::format("the {} reads {}, and no usual factor explains it.", name(c),
                        volts_and_pct(channel.rms_v)),
            "Compare with a meter. If the meter says the same, disconnect what must not have so much; else "
-           "find the "
-           "scale anew.");
+           "find the scale anew.");
     } else if (regulated && !expected.holds(channel.rms_v) && !in_impossible_pair(c)) {
       find(Severity::look_at_it, Matter::out_of_band, {c},
            fmt::format("the {} reads {} V, outside its band of {:.1f} to {:.1f} V.", name(c),
                        plain(channel.rms_v), site_.regulator->band_low_v, site_.regulator->band_high_v),
            fmt::format("Compare with a meter. If the regulator holds its band by the meter, the scale of the "
-                       "{} is off "
-                       "by about {:+.1f} %.",
+                       "{} is off by about {:+.1f} %.",
                        name(c), 100.0 * (channel.rms_v / site_.regulator->target_v - 1.0)));
     }
   }
 
   void not_judged() {
     for (const PairFigures& pair : impossible_) {
-      if (has_found(Matter::scale, pair.input) || has_found(Matter::scale, pair.output)) continue;
+      if (has_found(Matter::scale, pair.input) || has_found(Matter::scale, pair.output) ||
+          has_found(Matter::swapped, pair.input))
+        continue;
       find(Severity::must_be_fixed, Matter::ratio, {pair.input, pair.output},
            fmt::format("U_out/U_in is {:.3f}, outside the {:.3f} to {:.3f} that the {}'s regulator is "
-                       "declared to reach; "
-                       "the inverse does not fit either.",
+                       "declared to reach; the inverse does not fit either.",
                        pair.ratio, site_.regulator->ratio_min, site_.regulator->ratio_max, name(pair.output)),
            "Compare both with a meter: either a scale is wrong, or the declared range.");
     }
@@ -700,12 +706,10 @@ class Judge {
     const bool input = site_.has(Side::input);
     const bool output = site_.has(Side::output);
     if (input != output)
-      find(
-          Severity::fine, Matter::not_judged, {},
-          fmt::format(
-              "only the {} is measured: whether the sensor is on the right side and the right way round, and "
-              "what the ratio is, cannot be judged.",
-              input ? "input" : "output"));
+      find(Severity::fine, Matter::not_judged, {},
+           fmt::format("only the {} is measured: whether the sensor is on the right side and the right way "
+                       "round, and what the ratio is, cannot be judged.",
+                       input ? "input" : "output"));
     if (!site_.regulator && output)
       find(Severity::fine, Matter::not_judged, {},
            "no regulator is described: whether the ratio and the output's level fit it cannot be judged.");
@@ -717,7 +721,8 @@ class Judge {
   std::vector<std::optional<double>> angles_;  // reversed sensors turned back
   std::vector<bool> rectified_;
   std::array<bool, 2> mirrored_{};
-  std::vector<PairFigures> impossible_;  // ratios out of reach, not explained by an exchange
+  std::vector<PairFigures> same_;        // ratio 1, same noise
+  std::vector<PairFigures> impossible_;  // ratios out of reach, for which the band has no explanation
 };
 
 }  // namespace

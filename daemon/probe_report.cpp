@@ -18,18 +18,14 @@ constexpr std::string_view kNotMeasured = "-";
 constexpr const char* kCautions[] = {
     "Mains voltage kills. Sensors are wired only by people who are competent and, where the law asks for it, "
     "licensed, by local codes and the makers' instructions. Isolate, lock off, and prove dead with a tester "
-    "that "
-    "was itself proved before and after.",
+    "that was itself proved before and after.",
     "The front end must carry the measurement category of its place (IEC 61010): CAT II at socket outlets, "
-    "CAT III "
-    "in the building's fixed wiring, CAT IV at the service entrance; each live sense lead needs a fuse of "
-    "high "
-    "breaking capacity close to the tap.",
+    "CAT III in the building's fixed wiring, CAT IV at the service entrance; each live sense lead needs a "
+    "fuse of high breaking capacity close to the tap.",
     "A resistive divider alone does not isolate, and neither does an autotransformer: between the mains and "
     "anything that can be touched there must be reinforced insulation.",
     "A reading near 0 V here does not mean that a conductor is dead. These figures are from sensors that may "
-    "not "
-    "have been calibrated."};
+    "not have been calibrated."};
 
 /// `text` in lines of at most 96 characters, the first after `lead`, the others indented as far.
 std::string wrapped(std::string_view lead, std::string_view text) {
@@ -56,7 +52,9 @@ std::string wrapped(std::string_view lead, std::string_view text) {
 }
 
 std::string text_of(const std::optional<double>& figure, int decimals) {
-  return figure ? fmt::format("{:.{}f}", *figure, decimals) : std::string(kNotMeasured);
+  if (!figure) return std::string(kNotMeasured);
+  const double unit = std::pow(10.0, decimals);
+  return fmt::format("{:.{}f}", std::round(*figure * unit) / unit + 0.0, decimals);  // + 0.0: no "-0.00"
 }
 
 std::string side_by_side(std::string_view what, std::string_view unit,
@@ -113,7 +111,9 @@ std::string pair_line(const config::Site& site, const ProbeFigures& figures, con
                                 ? " of " + std::string(name_of(figures.channels[pair.input].channel.phase))
                                 : std::string();
   std::string line = fmt::format("U_out/U_in{}: {:.4f}", phase, pair.ratio);
-  if (pair.skew_deg)
+  if (pair.skew_deg && std::abs(*pair.skew_deg) < 0.001)
+    line += "; in phase";
+  else if (pair.skew_deg)
     line += fmt::format("; the output's fundamental {} by {:.3f} degrees ({:.1f} us)",
                         *pair.skew_deg < 0.0 ? "lags" : "leads", std::abs(*pair.skew_deg),
                         std::abs(*pair.skew_us));
