@@ -1,5 +1,5 @@
 #!/usr/bin/env python3
-"""tramlined on a board that streams as time goes: over a pseudo-terminal, unplugged and plugged in again.
+"""tramlined on live sources: a board over a pseudo-terminal, unplugged and plugged in again; a meter over Modbus TCP.
 
 The frames are made here with struct and zlib, after BOARD-FRAMES.md and not with our own sender, so that description, sender and
 receiver are held against each other.
@@ -12,6 +12,7 @@ import os
 import pathlib
 import pty
 import signal
+import socket
 import sqlite3
 import struct
 import subprocess
@@ -97,7 +98,35 @@ class Board:
         self.unplugged = True
 
 
-class ALiveBoard(unittest.TestCase):
+class Meter:
+    """A made-up meter: Modbus TCP, function 4 (read input registers), one IEEE 754 single in each two registers.
+
+    Written after the Modbus application protocol specification 1.1b3, 6.4, and the messaging guide for TCP 1.0b, 3.1 (from memory)."""
+
+    def __init__(self):
+        self.volts = [230.0, 231.0]
+        self.listener = socket.create_server(("127.0.0.1", 0))
+        self.port = self.listener.getsockname()[1]
+        threading.Thread(target=self.run, daemon=True).start()
+
+    def run(self):
+        try:
+            connection, _ = self.listener.accept()
+            with connection, connection.makefile("rwb") as stream:
+                while head := stream.read(12):
+                    transaction, protocol, _, unit, function, address, count = struct.unpack(">HHHBBHH", head)
+                    registers = struct.pack(">2f", *self.volts)[2 * address : 2 * (address + count)]
+                    answer = struct.pack(">BBB", unit, function, len(registers)) + registers
+                    stream.write(struct.pack(">HHH", transaction, protocol, len(answer)) + answer)
+                    stream.flush()
+        except OSError:
+            pass
+
+    def close(self):
+        self.listener.close()
+
+
+class Daemon(unittest.TestCase):
     def setUp(self):
         self.folder = tempfile.TemporaryDirectory()
         self.addCleanup(self.folder.cleanup)
@@ -105,11 +134,6 @@ class ALiveBoard(unittest.TestCase):
         self.logbook = self.path / "live.logbook"
         self.site = self.path / "site.yaml"
         self.site.write_text(SITE.format(folder=self.path))
-
-    def board(self, begin=1):
-        board = Board(self.path / "board", begin)
-        self.addCleanup(board.unplug)
-        return board
 
     def start(self):
         daemon = subprocess.Popen([TRAMLINED, str(self.site)], stderr=subprocess.PIPE, text=True)
@@ -140,6 +164,13 @@ class ALiveBoard(unittest.TestCase):
             if len(found) >= count:
                 return found
             time.sleep(0.05)
+
+
+class ALiveBoard(Daemon):
+    def board(self, begin=1):
+        board = Board(self.path / "board", begin)
+        self.addCleanup(board.unplug)
+        return board
 
     def test_is_measured_survives_lost_frames_and_unplugging_and_goes_on(self):
         board = self.board()
@@ -184,6 +215,40 @@ class ALiveBoard(unittest.TestCase):
         self.wait_for(daemon, "opening the source again")
         daemon.send_signal(signal.SIGTERM)
         self.assertEqual(daemon.wait(timeout=60), 0)
+
+
+class AMeter(Daemon):
+    def test_gives_readings_and_every_answer_says_what_they_cannot_show(self):
+        meter = Meter()
+        self.addCleanup(meter.close)
+        self.site.write_text(
+            SITE.format(folder=self.path)
+            .replace("mains", "'input:0:f32'")
+            .replace("load", "'input:2:f32'")
+            .replace("source: {kind: serial", f"source: {{kind: modbus_tcp, host: 127.0.0.1, port: {meter.port}, every: 100ms}}\n#")
+            .replace("band_v: [215, 225]", "band_v: [215, 235]")
+        )
+        daemon = self.start()
+        self.wait_for(daemon, "r.m.s.")
+        self.wait_for_rows("SELECT 1 FROM session WHERE readings_every_ns = 100000000", 1)
+        time.sleep(1)
+        meter.volts = [150.0, 150.0]
+        self.wait_for_rows("SELECT 1 FROM event WHERE side = 0 AND kind = 0", 1)
+        meter.volts = [230.0, 231.0]
+        self.wait_for_rows("SELECT 1 FROM event WHERE side = 0 AND kind = 0 AND end_reason = 1", 1)
+        daemon.send_signal(signal.SIGTERM)
+        self.assertEqual(daemon.wait(timeout=60), 0)
+
+        (extreme_v,) = self.rows("SELECT extreme_v FROM event WHERE side = 0")[0]
+        self.assertEqual(extreme_v, 150.0)
+        self.assertEqual(self.rows("SELECT count(*) FROM frequency"), [(0,)])
+        self.assertEqual(self.rows("SELECT count(*) FROM waveform"), [(0,)])
+        self.assertEqual(self.rows("SELECT max(u_max_v) FROM aggregate WHERE side = 1"), [(231.0,)])
+        for command in ("verdict", "events"):
+            answer = subprocess.run([TRAMLINE, command, str(self.logbook)], capture_output=True, text=True, timeout=60, check=False)
+            told = " ".join(answer.stdout.split())
+            self.assertIn("Only r.m.s. readings of a meter every 100 ms were taken: a sag or swell shorter than that", told)
+        self.assertIn("sag", told)
 
 
 if __name__ == "__main__":
