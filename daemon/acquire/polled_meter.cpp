@@ -30,7 +30,9 @@ class PolledMeter : public Device {
   PolledMeter(const config::PolledMeterSettings& settings, std::vector<config::ChannelSettings> channels)
       : settings_(settings),
         channels_(std::move(channels)),
-        every_ns_(std::llround(settings.every_s * 1e9)) {}
+        every_ns_(std::llround(settings.every_s * 1e9)) {
+    assert(every_ns_ > 0);
+  }
 
   Result<StreamInfo> open(const std::atomic<bool>& stop) override {
     for (const config::ChannelSettings& channel : channels_) {

@@ -51,6 +51,7 @@ TEST(MeterRequests, TheOrderOfAskingIsThatOfAddresses) {
 TEST(MeterRequests, RegistersThatOverlapAreAskedForOnce) {
   EXPECT_EQ(plan({"input:0:u32", "input:0:f32", "input:1:u16", "input:1:u32"}),
             Lines({"input 0 3: 0 1 2 3"}));
+  EXPECT_EQ(plan({"input:0:u32", "input:0:u16"}), Lines({"input 0 2: 0 1"}));
 }
 
 TEST(MeterRequests, ARequestIsNoLongerThanItMayBe) {

@@ -163,6 +163,18 @@ TYPED_TEST(PolledMeterOver, ReadingsFollowOneAnotherOnTheClocks) {
   EXPECT_NEAR(static_cast<double>(second->first - first->first), between_ms, 1.0);
 }
 
+TYPED_TEST(PolledMeterOver, NoReadingComesBeforeItsTime) {
+  auto settings = at(this->server_);
+  settings.every_s = 0.02;
+  Meter meter(settings, {"input:0:f32"});
+  ASSERT_EQ(meter.open(), "");
+  for (std::int64_t i = 0; i < 5; ++i) {
+    const auto reading = meter.reading();
+    ASSERT_TRUE(reading) << meter.error;
+    EXPECT_GE(reading->first, 20 * i);
+  }
+}
+
 TYPED_TEST(PolledMeterOver, SaysWhatItIsAndWhatItCannotSee) {
   auto settings = at(this->server_);
   settings.every_s = 0.25;
