@@ -285,7 +285,9 @@ class Converter : public Device {
     if (refill.error != 0) return iio_trouble(place_, "the capture broke off", refill.error);
     if (refill.bytes == 0) return kDone;
     iio_buffer* buffer = buffer_->buffer();
-    const std::ptrdiff_t step = iio_buffer_step(buffer);
+    const std::ptrdiff_t packed = iio_buffer_step(buffer);
+    const auto step = static_cast<std::ptrdiff_t>(
+        scan_bytes(static_cast<std::size_t>(std::max<std::ptrdiff_t>(packed, 0)), longest_));
     if (step <= 0 || refill.bytes % step != 0)
       return Error{place_.text(), "it gave a part of a scan", "if that goes on, see to its driver"};
     const auto frames = static_cast<std::size_t>(refill.bytes / step);
@@ -297,14 +299,14 @@ class Converter : public Device {
     transfer.arrival.frames = frames;
     transfer.arrival.values.resize(frames * columns_.size());
     for (std::size_t c = 0; c < columns_.size(); ++c) {
-      const std::byte* sample = first_of(buffer, columns_[c], frames);
+      const std::byte* sample = first_of(buffer, columns_[c], step, frames);
       if (sample == nullptr) return left_out();
       convert(sample, step, c, transfer.arrival);
     }
     came_ += static_cast<std::int64_t>(frames);
     transfers_.push_back(std::move(transfer));
     if (!stamps_) return kDone;
-    const std::byte* stamp = first_of(buffer, *stamps_, frames);
+    const std::byte* stamp = first_of(buffer, *stamps_, step, frames);
     if (stamp == nullptr) return left_out();
     for (std::size_t i = 0; i < frames; ++i, stamp += step)
       stamps_seen_.push_back(stamps_->element.bits_at(stamp));
@@ -317,10 +319,11 @@ class Converter : public Device {
   }
 
   /// The column's sample in the first of `frames` scans; nullptr if they do not have it.
-  static const std::byte* first_of(iio_buffer* buffer, const Column& column, std::size_t frames) {
+  static const std::byte* first_of(iio_buffer* buffer, const Column& column, std::ptrdiff_t step,
+                                   std::size_t frames) {
     const auto* end = static_cast<const std::byte*>(iio_buffer_end(buffer));
     const auto* first = static_cast<const std::byte*>(iio_buffer_first(buffer, column.channel));
-    const auto last = static_cast<std::ptrdiff_t>(frames - 1) * iio_buffer_step(buffer);
+    const auto last = static_cast<std::ptrdiff_t>(frames - 1) * step;
     return end - first >= last + static_cast<std::ptrdiff_t>(column.element.bytes()) ? first : nullptr;
   }
 
@@ -426,6 +429,7 @@ class Converter : public Device {
   std::vector<Column> columns_;         // likewise
   std::optional<Column> stamps_;
   std::size_t block_ = 0;
+  std::size_t longest_ = 1;            // bytes of the longest element in a scan
   double held_s_ = 0.0;                // by the kernel's buffer
   std::unique_ptr<IioBuffer> buffer_;  // after the context, which must outlive it
   std::deque<Transfer> transfers_;

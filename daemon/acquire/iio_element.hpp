@@ -44,6 +44,13 @@ class IioElement {
   std::string text_;
 };
 
+/// Bytes from one scan to the next, of scans that end `packed_bytes` after their begin and whose longest
+/// element has `longest_bytes`: the kernel (since 5.6) pads scans to a multiple of that, which libiio 0.24
+/// leaves out where a shorter element comes last.
+[[nodiscard]] constexpr std::size_t scan_bytes(std::size_t packed_bytes, std::size_t longest_bytes) {
+  return (packed_bytes + longest_bytes - 1) / longest_bytes * longest_bytes;
+}
+
 /// What turns counts into volts at the converter: its attributes are in millivolts.
 struct IioScale {
   double scale_mv = 1000.0;  ///< of one count
