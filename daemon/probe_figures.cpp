@@ -22,8 +22,7 @@ constexpr double kArrivalJitterS = 0.05;      // a block, and the scheduler
 constexpr std::int64_t kRunsOfLimit = 3;
 constexpr std::int64_t kSamplesOfLimit = 3;
 // A rounded crest stands still for as long as it stays within one step of the converter, and leaves it by a
-// step. A limit holds what would have gone on by many steps, and is left steeply.
-constexpr double kStepsHeldBack = 8.0;
+// step. A limit is left steeply.
 constexpr double kStepsAtEdge = 2.5;
 
 double root_mean_square(std::span<const float> volts) {
@@ -62,9 +61,8 @@ double smallest_step(std::span<const float> volts) {
   return std::isinf(least) ? 0.0 : static_cast<double>(least);
 }
 
-/// The limit at `extreme`, if there is one; `per_sample` is the fundamental's angle from sample to sample.
-std::optional<LimitFigures> limit_at(float extreme, std::span<const float> volts, double step_v,
-                                     double peak_v, double per_sample) {
+/// The limit at `extreme`, if there is one.
+std::optional<LimitFigures> limit_at(float extreme, std::span<const float> volts, double step_v) {
   LimitFigures limit{static_cast<double>(extreme), 0, 0};
   double edges = 0.0;
   for (std::size_t i = 1; i < volts.size(); ++i) {
@@ -82,8 +80,6 @@ std::optional<LimitFigures> limit_at(float extreme, std::span<const float> volts
     i = end;
   }
   if (limit.runs < kRunsOfLimit) return std::nullopt;
-  const double held_back_v = peak_v * (1.0 - std::cos(per_sample * static_cast<double>(limit.longest) / 2.0));
-  if (held_back_v < kStepsHeldBack * step_v) return std::nullopt;
   if (edges / static_cast<double>(limit.runs) < kStepsAtEdge * step_v) return std::nullopt;
   return limit;
 }
@@ -178,13 +174,11 @@ void add_extremes(ChannelFigures& figures, std::span<const float> volts) {
   figures.constant = *low == *high && volts.size() > 1;
 }
 
-void add_limits(ChannelFigures& figures, std::span<const float> volts, double rate_hz) {
+void add_limits(ChannelFigures& figures, std::span<const float> volts) {
   if (!figures.wave) return;
   const auto [low, high] = std::minmax_element(volts.begin(), volts.end());
-  const double peak_v = std::numbers::sqrt2 * figures.wave->fundamental_v;
-  const double per_sample = 2.0 * std::numbers::pi * figures.wave->hz / rate_hz;
-  figures.upper_limit = limit_at(*high, volts, figures.step_v, peak_v, per_sample);
-  figures.lower_limit = limit_at(*low, volts, figures.step_v, peak_v, per_sample);
+  figures.upper_limit = limit_at(*high, volts, figures.step_v);
+  figures.lower_limit = limit_at(*low, volts, figures.step_v);
 }
 
 void add_over_range(ChannelFigures& figures, const std::vector<bool>& over_range) {
@@ -320,7 +314,7 @@ ProbeFigures Probe::figures(const acquire::StreamHealth& health) const {
     if (!hz[c] || pieces.begins.empty()) continue;
     fits[c] = fitted(stretch_of(c), rate_hz_, *hz[c], pieces);
     channel.wave = wave_of(fits[c], rate_hz_, *hz[c]);
-    add_limits(channel, volts_[c], rate_hz_);
+    add_limits(channel, volts_[c]);
     if (!reference) reference = c;
     if (std::abs(*hz[c] - *hz[*reference]) < kSameFrequencyHz)
       channel.angle_deg = angle_between(fits[c], fits[*reference]);

@@ -244,7 +244,8 @@ class Judge {
                      both ? fmt::format(" and at {} V", plain(channel.lower_limit->at_v)) : std::string(),
                      limit.runs, limit.longest),
          "Turn down the gain before the converter, or use a divider or a converter range with more room; "
-         "then declare the limit as range_v.");
+         "then declare the limit as range_v. Only where a simple inverter feeds the site may the wave itself "
+         "be flat.");
   }
 
   void rectified(std::size_t c) {

@@ -157,6 +157,90 @@ class TheDaemon(Programs):
         self.assertRegex(done.stderr, r"^<3>")
 
 
+PROBED = """\
+site: {{name: Probed, nominal_v: 230, frequency_hz: 50}}
+regulator: {{target_v: 230, band_pct: 3, input_v: [170, 270]}}
+channels:
+  - {{side: input, scale: {input_scale}}}
+  - {{side: output, scale: {output_scale}}}
+logbook: {{path: {logbook}}}
+source: {{kind: simulator, rate_hz: 3200, grid: {{voltage_v: 195, wander_pct: 0}}, servo: {{load_step_a: 0}}}}
+"""
+
+
+class TheProbe(Programs):
+    def probe(self, *options, **change):
+        site = self.path / "probed.yaml"
+        site.write_text(PROBED.format(**{"logbook": self.logbook, "input_scale": 1, "output_scale": 1, **change}))
+        done = self.run_program(TRAMLINED, "--probe", *options, site)
+        self.assertEqual([p.name for p in self.path.iterdir()], ["probed.yaml"], "a probe writes nothing")
+        self.assertEqual(done.stderr, "")  # no progress in a pipe
+        return done
+
+    def found(self, **change):
+        done = self.probe("--json", "--seconds", "2", **change)
+        return done.returncode, [(f["severity"], f["matter"], f["channels"]) for f in json.loads(done.stdout)["findings"]]
+
+    def test_a_sound_site_has_nothing_to_fix(self):
+        done = self.probe()
+        self.assertEqual(done.returncode, 0, done.stdout)
+        self.assertTrue(done.stdout.startswith("Before anyone touches a wire"))
+        self.assertIn("Mains voltage kills", done.stdout)
+        self.assertTrue(done.stdout.rstrip().splitlines()[-1].startswith("Nothing must be fixed."))
+        self.assertEqual(self.found(), (0, []))
+        answer = json.loads(self.probe("--json", "--seconds", "3").stdout)
+        self.assertEqual(answer["frames"], 9600)
+        self.assertAlmostEqual(answer["channels"][0]["rms_v"], 195, delta=1)
+        self.assertAlmostEqual(answer["channels"][0]["wave"]["thd_pct"], (1.5**2 + 2.5**2 + 1) ** 0.5, delta=0.05)
+
+    def test_every_example_site_is_sound(self):
+        for example in sorted((ROOT / "config" / "examples").glob("*.yaml")):
+            done = self.run_program(TRAMLINED, "--probe", "--seconds", "1", example)
+            self.assertEqual(done.returncode, 0, done.stdout + done.stderr)
+
+    def test_a_scale_wrong_by_the_crest_factor_of_a_sine_is_found(self):
+        self.assertEqual(self.found(output_scale=2**0.5), (1, [("must be fixed", "scale", ["output.L1"])]))
+        told = self.probe(output_scale=2**0.5)
+        self.assertEqual(told.returncode, 1)
+        self.assertIn("to be 1 instead of 1.414", " ".join(told.stdout.split()))
+        self.assertIn("1 thing must be fixed", told.stdout)
+
+    def test_a_negative_scale_is_a_sensor_the_wrong_way_round(self):
+        self.assertEqual(self.found(output_scale=-1), (1, [("must be fixed", "reversed", ["input.L1", "output.L1"])]))
+
+    def test_channels_exchanged_in_a_recording_are_found(self):
+        import math
+        table = self.path / "two.csv"
+        rows = [f"{n / 3200:.7f},{180 * 2**0.5 * math.sin(2 * math.pi * 50 * n / 3200):.2f},{230 * 2**0.5 * math.sin(2 * math.pi * 50 * n / 3200):.2f}" for n in range(6400)]
+        table.write_text("time_s,a,b\n" + "\n".join(rows) + "\n")
+        site = self.path / "exchanged.yaml"
+        for first, second, expected in (("a", "b", (0, [])), ("b", "a", (1, [("must be fixed", "sides swapped")]))):
+            site.write_text(f"""\
+site: {{name: Probed, nominal_v: 230, frequency_hz: 50}}
+regulator: {{target_v: 230, band_pct: 3, input_v: [170, 270]}}
+channels: [{{side: input, source_channel: {first}}}, {{side: output, source_channel: {second}}}]
+source: {{kind: recording, path: {table}, begin: 2026-03-01T00:00:00Z}}
+""")
+            done = self.run_program(TRAMLINED, "--probe", "--json", site)
+            found = [(f["severity"], f["matter"]) for f in json.loads(done.stdout)["findings"]]
+            self.assertEqual((done.returncode, found), expected, done.stderr)
+
+    def test_wrong_site_files_and_sources_that_cannot_be_had_have_statuses_of_their_own(self):
+        site = self.path / "bad.yaml"
+        site.write_text("site: {name: X, nominal_v: 0}\n")
+        self.assertEqual(self.run_program(TRAMLINED, "--probe", site).returncode, 2)
+        site.write_text(PROBED.format(logbook="x", input_scale=1, output_scale=1).split("source:")[0] + "source: {kind: recording, path: none.wav}\n")
+        done = self.run_program(TRAMLINED, "--probe", site)
+        self.assertEqual(done.returncode, 3, done.stderr)
+        self.assertIn("none.wav", done.stderr)
+        self.assertEqual(done.stdout, "")
+
+    def test_wrong_usage_ends_with_2(self):
+        site = self.site()
+        for options in (["--seconds", "3"], ["--json"], ["--probe", "--seconds", "0"], ["--probe", "--seconds", "61"], ["--probe", "--check"]):
+            self.assertEqual(self.run_program(TRAMLINED, *options, site).returncode, 2, options)
+
+
 class TheTool(Programs):
     def setUp(self):
         super().setUp()
