@@ -1,14 +1,15 @@
 #include "daemon/service.hpp"
 
 #include <algorithm>
+#include <cmath>
 #include <csignal>
 #include <sstream>
 #include <variant>
 
 #include "config/site_file.hpp"
+#include "config/time_text.hpp"
 #include "config/version.hpp"
 #include "daemon/acquire/open_source.hpp"
-#include "daemon/kernel_clock.hpp"
 
 namespace tramline {
 namespace {
@@ -20,6 +21,9 @@ constexpr std::chrono::seconds kLookAtClockEvery(10);
 constexpr std::chrono::hours kRemindEvery(24);
 constexpr std::chrono::seconds kFirstRetry(1);
 constexpr std::chrono::seconds kLongestRetry(60);
+constexpr std::chrono::seconds kFirstReport(60);
+constexpr std::chrono::hours kReportEvery(1);
+constexpr int kMostBlocksAStep = 64;
 
 UtcNs now() {
   return {std::chrono::duration_cast<std::chrono::nanoseconds>(
@@ -27,10 +31,10 @@ UtcNs now() {
               .count()};
 }
 
-/// A recording is read as fast as it goes; the simulator as its settings say.
-bool runs_in_real_time(const config::Site& site) {
+/// A recording is read as fast as it goes; the simulator as its settings say; a live source as samples come.
+bool runs_in_real_time(const config::Site& site, const acquire::StreamInfo& info) {
   const auto* simulator = std::get_if<config::SimulatorSettings>(&site.source);
-  return simulator != nullptr && simulator->real_time;
+  return info.live || (simulator != nullptr && simulator->real_time);
 }
 
 }  // namespace
@@ -92,26 +96,34 @@ void Service::open_source() {
     return;
   }
   source_ = std::move(source).value();
-  real_time_ = runs_in_real_time(*site_);
+  schedule(Clock::duration::zero());
+}
+
+void Service::begin_measuring() {
   const acquire::StreamInfo& info = source_->info();
+  real_time_ = runs_in_real_time(*site_, info);
   log_->info("source: {}", info.what);
   for (const std::string& remark : info.remarks)
     log_->info("source: {}", remark);
 
   pipeline_ = std::make_unique<Pipeline>(*site_, info, "the daemon opened its source");
-  look_at_clock();
   records_.emplace_back(storage::SessionBegin{std::string("tramlined ") + kVersion, info.what, info.rate_hz,
-                                              info.dated, info.begin});
+                                              info.dated, info.begin,
+                                              std::llround(info.readings_every_s * 1e9)});
   records_.emplace_back(storage::SettingsInForce{info.begin, site_->text});
   records_.emplace_back(storage::CalibrationInForce{info.begin, site_->calibration.text});
+  clock_watch_.emplace(site_->clock);
+  clock_trust_.reset();
+  look_at_clock();
   queue_.put(records_);
   source_began_ = Clock::now();
+  next_report_ = source_began_ + kFirstReport;
   frames_taken_ = 0;
-  schedule(Clock::duration::zero());
 }
 
 void Service::close_source(storage::EventEnd reason, const std::string& why) {
   if (pipeline_) {
+    report_health();
     pipeline_->finish(reason, why, records_);
     records_.emplace_back(storage::SessionEnd{why});
     queue_.put(records_);
@@ -122,8 +134,33 @@ void Service::close_source(storage::EventEnd reason, const std::string& why) {
 
 void Service::look_at_clock() {
   next_look_ = Clock::now() + kLookAtClockEvery;
-  if (real_time_) pipeline_->clock_state(kernel_clock_state());
   remind_of_calibration();
+  if (!real_time_) return;
+  storage::ClockState state = clock_watch_->look(kernel_clock());
+  // The samples' own time is a little worse than the clock's.
+  if (state.error_bound_ns >= 0) state.error_bound_ns += source_->health().time_error_ns;
+  if (clock_trust_ != state.trust) {
+    const std::string words =
+        (clock_trust_ ? "the clock is now " : "the clock at the start: ") + clock_words(state);
+    log_->info("{}", words);
+    records_.emplace_back(storage::ClockChange{now(), words, 0, state});
+    clock_trust_ = state.trust;
+  }
+  pipeline_->clock_state(state);
+}
+
+void Service::report_health() {
+  next_report_ = Clock::now() + kReportEvery;
+  if (!source_->info().live) return;
+  const acquire::StreamHealth health = source_->health();
+  if (health.rate_hz > 0.0) {
+    const double nominal_hz = source_->info().rate_hz;
+    log_->info("source: true sample rate {:.3f} Hz, {:+.1f} ppm of nominal, standard uncertainty {:.1f} ppm",
+               health.rate_hz, (health.rate_hz / nominal_hz - 1.0) * 1e6, health.rate_error_ppm);
+  }
+  log_->info("source: {} samples taken, {} lost, {} not taken in time, {} over-range, {} bytes refused",
+             health.frames, health.lost_frames, health.overrun_frames, health.over_range_frames,
+             health.refused_bytes);
 }
 
 void Service::remind_of_calibration() {
@@ -134,38 +171,65 @@ void Service::remind_of_calibration() {
 }
 
 std::size_t Service::frames_due() const {
-  if (!real_time_) return kMostFrames;
+  if (!real_time_ || source_->info().live) return kMostFrames;
   const double gone_s = std::chrono::duration<double>(Clock::now() - source_began_).count();
   const auto due = static_cast<std::int64_t>(gone_s * source_->info().rate_hz) - frames_taken_;
   return static_cast<std::size_t>(std::clamp<std::int64_t>(due, 0, kMostFrames));
 }
 
 void Service::step() {
+  if (!pipeline_) {
+    const auto ready = source_->ready();
+    if (!ready) {
+      source_failed(ready.error());
+      return;
+    }
+    if (!ready.value()) {
+      schedule(kBlockEvery);
+      return;
+    }
+    begin_measuring();
+  }
   if (!real_time_ && queue_.crowded()) {
     schedule(kWaitForDisk);
     return;
   }
-  const std::size_t due = frames_due();
-  if (due > 0) {
-    auto more = source_->next(block_, due);
-    if (!more) {
-      source_failed(more.error());
-      return;
-    }
-    if (!more.value()) {
-      const std::string why = source_->end_remark();
-      log_->info("the source is over: {}", why);
-      close_source(storage::EventEnd::stopped, why);
-      stop(why);
-      return;
-    }
-    if (Clock::now() >= next_look_) look_at_clock();
-    frames_taken_ += static_cast<std::int64_t>(block_.frames());
-    pipeline_->take(block_, records_);
-    queue_.put(records_);
-    retry_after_ = kFirstRetry;
+  // A live source may have several pieces waiting, with gaps between them.
+  const int most = source_->info().live ? kMostBlocksAStep : 1;
+  for (int i = 0; i < most; ++i) {
+    if (!take_block()) return;
+    if (block_.frames() == 0) break;
   }
+  if (real_time_ && Clock::now() >= next_report_) report_health();
   schedule(real_time_ ? Clock::duration(kBlockEvery) : Clock::duration::zero());
+}
+
+/// false: the source is closed.
+bool Service::take_block() {
+  const std::size_t due = frames_due();
+  block_.resize(block_.channels(), 0);
+  if (due == 0) return true;
+  auto more = source_->next(block_, due);
+  if (!more) {
+    source_failed(more.error());
+    return false;
+  }
+  if (!more.value()) {
+    const std::string why = source_->end_remark();
+    log_->info("the source is over: {}", why);
+    close_source(storage::EventEnd::stopped, why);
+    stop(why);
+    return false;
+  }
+  if (block_.frames() == 0) return true;
+  if (Clock::now() >= next_look_ ||
+      (block_.anchor && block_.anchor->cause == measure::AnchorCause::clock_set))
+    look_at_clock();
+  frames_taken_ += static_cast<std::int64_t>(block_.frames());
+  pipeline_->take(block_, records_);
+  queue_.put(records_);
+  retry_after_ = kFirstRetry;
+  return true;
 }
 
 void Service::schedule(Clock::duration after) {

@@ -15,6 +15,7 @@
 
 #include "config/site.hpp"
 #include "daemon/acquire/source.hpp"
+#include "daemon/clock_watch.hpp"
 #include "daemon/pipeline.hpp"
 #include "daemon/record_queue.hpp"
 #include "daemon/writer_thread.hpp"
@@ -45,8 +46,11 @@ class Service {
   using Clock = std::chrono::steady_clock;
 
   void open_source();
+  void begin_measuring();
   void close_source(storage::EventEnd reason, const std::string& why);
   void step();
+  [[nodiscard]] bool take_block();
+  void report_health();
   void source_failed(const Error& error);
   void reread();
   void look_at_clock();
@@ -76,6 +80,9 @@ class Service {
   Clock::duration retry_after_;
   Clock::time_point next_look_;
   Clock::time_point next_reminder_{};
+  std::optional<ClockWatch> clock_watch_;
+  std::optional<storage::ClockTrust> clock_trust_;  // as last recorded in this session
+  Clock::time_point next_report_;
   bool stopping_ = false;
 };
 

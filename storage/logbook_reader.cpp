@@ -21,7 +21,12 @@ bool take(const Statement& row, int at, std::int64_t count, E& into) {
 }
 
 ClockState clock_of(const Statement& row, int at) {
-  return {row.integer(at) != 0, row.is_null(at + 1) ? -1 : row.integer(at + 1)};
+  ClockState state;
+  state.trust = row.integer(at) == 1   ? ClockTrust::synchronised
+                : row.integer(at) == 2 ? ClockTrust::holdover
+                                       : ClockTrust::never_set;
+  if (!row.is_null(at + 1)) state.error_bound_ns = row.integer(at + 1);
+  return state;
 }
 
 bool log_holds_something(const std::string& path) {
@@ -39,7 +44,7 @@ constexpr const char* kEventColumns =
     "duration_ns,phases,"
     "worst_phase,extreme_v,extreme_is_bound,reference_v,threshold_v,hysteresis_v,origin,reason,held_off,"
     "input_low_v,input_high_v,"
-    "ratio_low,ratio_high,clock_synchronised,clock_error_bound_ns FROM event ";
+    "ratio_low,ratio_high,clock_trust,clock_error_bound_ns FROM event ";
 
 bool event_of(const Statement& row, EventRow& out) {
   Event& event = out.event;
@@ -100,10 +105,10 @@ Result<LogbookReader> LogbookReader::open(const std::string& path) {
   }
   if (auto known = check_identity(database.value()); !known) return known.error();
   if (auto known = check_tables(database.value()); !known) return known.error();
-  // A logbook of version 1, which only a writer brings forward, has no such table.
+  // A logbook of version 2, which only a writer brings forward, has no such table.
   const auto version = database.value().integer_of("PRAGMA user_version");
   if (!version) return version.error();
-  return LogbookReader(std::move(database).value(), unchanging, version.value() >= 2);
+  return LogbookReader(std::move(database).value(), unchanging, version.value() >= 3);
 }
 
 Status LogbookReader::each(const std::string& sql, const Period& period, const char* table,
@@ -129,16 +134,18 @@ Status LogbookReader::each(const std::string& sql, const Period& period, const c
 
 Result<std::vector<Session>> LogbookReader::sessions() const {
   std::vector<Session> found;
-  auto done =
-      each("SELECT id,program,source,rate_hz,dated,begin_ns,why_ended FROM session WHERE ?1<=?2 ORDER BY id",
-           {}, "session", [&](const Statement& row) {
-             Session session{row.integer(0),
-                             {row.text(1), row.text(2), row.number(3), row.integer(4) != 0, {row.integer(5)}},
-                             {}};
-             if (!row.is_null(6)) session.why_ended = row.text(6);
-             found.push_back(std::move(session));
-             return true;
-           });
+  auto done = each(
+      "SELECT id,program,source,rate_hz,dated,begin_ns,why_ended,readings_every_ns FROM session WHERE ?1<=?2 "
+      "ORDER BY id",
+      {}, "session", [&](const Statement& row) {
+        Session session{
+            row.integer(0),
+            {row.text(1), row.text(2), row.number(3), row.integer(4) != 0, {row.integer(5)}, row.integer(7)},
+            {}};
+        if (!row.is_null(6)) session.why_ended = row.text(6);
+        found.push_back(std::move(session));
+        return true;
+      });
   if (!done) return done.error();
   return found;
 }
@@ -188,7 +195,7 @@ Result<std::vector<Aggregate>> LogbookReader::aggregates(Interval interval, cons
   const std::string sql =
       "SELECT "
       "side,phase,begin_ns,end_ns,u_rms_v,u_min_v,u_max_v,blocks,measured_ns,flagged,partial,over_range,"
-      "clock_synchronised,"
+      "clock_trust,"
       "clock_error_bound_ns FROM aggregate WHERE interval=" +
       std::to_string(static_cast<int>(interval)) +
       " AND end_ns>?1 AND begin_ns<?2 ORDER BY begin_ns,session,side,phase";
@@ -215,7 +222,7 @@ Result<std::vector<Aggregate>> LogbookReader::aggregates(Interval interval, cons
 Result<std::vector<Frequency>> LogbookReader::frequencies(const Period& period) const {
   std::vector<Frequency> found;
   auto done = each(
-      "SELECT begin_ns,end_ns,hz,cycles,trusted,flagged,clock_synchronised,clock_error_bound_ns FROM "
+      "SELECT begin_ns,end_ns,hz,cycles,trusted,flagged,clock_trust,clock_error_bound_ns FROM "
       "frequency "
       "WHERE end_ns>?1 AND begin_ns<?2 ORDER BY begin_ns,session",
       period, "frequency", [&](const Statement& row) {
@@ -337,7 +344,7 @@ Result<Waveform> LogbookReader::waveform(std::int64_t id) const {
 Result<std::vector<ClockChange>> LogbookReader::clock_changes(const Period& period) const {
   std::vector<ClockChange> found;
   auto done = each(
-      "SELECT at_ns,what,step_ns,clock_synchronised,clock_error_bound_ns FROM clock_change WHERE at_ns>=?1 "
+      "SELECT at_ns,what,step_ns,clock_trust,clock_error_bound_ns FROM clock_change WHERE at_ns>=?1 "
       "AND at_ns<?2 ORDER BY at_ns,id",
       period, "clock_change", [&](const Statement& row) {
         found.push_back({{row.integer(0)}, row.text(1), row.integer(2), clock_of(row, 3)});

@@ -37,7 +37,7 @@ std::int64_t number_of(Phase phase) {
 }
 
 void bind(Statement& statement, int at, const ClockState& clock) {
-  statement.bind(at, std::int64_t{clock.synchronised});
+  statement.bind(at, static_cast<std::int64_t>(clock.trust));
   if (clock.error_bound_ns >= 0) {
     statement.bind(at + 1, clock.error_bound_ns);
   } else {
@@ -189,7 +189,8 @@ Status LogbookWriter::Inside::set_up() {
 
 Status LogbookWriter::Inside::prepare() {
   const std::pair<Statement*, const char*> all[] = {
-      {&insert_session, "INSERT INTO session(program,source,rate_hz,dated,begin_ns) VALUES(?,?,?,?,?)"},
+      {&insert_session,
+       "INSERT INTO session(program,source,rate_hz,dated,begin_ns,readings_every_ns) VALUES(?,?,?,?,?,?)"},
       {&end_session, "UPDATE session SET why_ended=?2 WHERE id=?1"},
       {&insert_coverage,
        "INSERT INTO coverage(session,begin_sample,begin_ns,until_ns,measured_ns,why_begun) "
@@ -202,7 +203,7 @@ Status LogbookWriter::Inside::prepare() {
        "window_end_ns,"
        "duration_ns,phases,worst_phase,extreme_v,extreme_is_bound,reference_v,threshold_v,hysteresis_v,"
        "origin,reason,held_off,"
-       "input_low_v,input_high_v,ratio_low,ratio_high,clock_synchronised,clock_error_bound_ns) "
+       "input_low_v,input_high_v,ratio_low,ratio_high,clock_trust,clock_error_bound_ns) "
        "VALUES(?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?,?) "
        "ON CONFLICT(session,side,kind,begin_sample,phase_key) DO UPDATE SET "
        "end_reason=excluded.end_reason,end_ns=excluded.end_ns,"
@@ -221,7 +222,7 @@ Status LogbookWriter::Inside::prepare() {
        "INSERT INTO waveform(session,begin_sample,begin_ns,end_ns,rate_hz) VALUES(?,?,?,?,?)"},
       {&insert_trace, "INSERT INTO trace VALUES(?,?,?,?,?)"},
       {&insert_clock_change,
-       "INSERT INTO clock_change(session,at_ns,what,step_ns,clock_synchronised,clock_error_bound_ns) "
+       "INSERT INTO clock_change(session,at_ns,what,step_ns,clock_trust,clock_error_bound_ns) "
        "VALUES(?,?,?,?,?,?)"},
       {&last_settings, "SELECT text FROM settings ORDER BY id DESC LIMIT 1"},
       {&insert_settings, "INSERT INTO settings(session,from_ns,text) VALUES(?,?,?)"},
@@ -387,7 +388,9 @@ Status LogbookWriter::Inside::store_any(const Record& record, Place& at) {
     insert_session.bind(1, std::string_view(begin->program))
         .bind(2, std::string_view(begin->source))
         .bind(3, begin->rate_hz);
-    insert_session.bind(4, std::int64_t{begin->dated}).bind(5, begin->begin.value);
+    insert_session.bind(4, std::int64_t{begin->dated})
+        .bind(5, begin->begin.value)
+        .bind(6, begin->readings_every_ns);
     if (auto done = insert_session.run(); !done) return done;
     at.session = database.last_row_id();
     at.coverage = 0;

@@ -18,10 +18,17 @@ namespace tramline::storage {
 
 inline constexpr double kNotMeasured = std::numeric_limits<double>::quiet_NaN();
 
+/// What keeps the kernel's UTC clock.
+enum class ClockTrust : std::uint8_t {
+  never_set,     ///< nothing has set it since measuring began, or nothing is known of it
+  synchronised,  ///< a time server, or the like, steers it
+  holdover,      ///< it was steered and runs by itself now: the bound grows
+};
+
 /// How far the time of a record may be trusted.
 struct ClockState {
-  bool synchronised = false;
-  std::int64_t error_bound_ns = -1;  ///< the kernel's bound on the error; -1: not known
+  ClockTrust trust = ClockTrust::never_set;
+  std::int64_t error_bound_ns = -1;  ///< bound on the error of the record's time; -1: not known
   friend bool operator==(const ClockState&, const ClockState&) = default;
 };
 
@@ -169,6 +176,8 @@ struct SessionBegin {
   double rate_hz = 0.0;
   bool dated = true;  ///< false: times count from the recording's begin
   UtcNs begin;        ///< of sample 0
+  /// Not 0: no samples but r.m.s. readings of a meter, so far apart; "half-cycle values" are readings then.
+  std::int64_t readings_every_ns = 0;
 };
 struct SessionEnd {
   std::string why;

@@ -163,6 +163,14 @@ CREATE TABLE pruned(
 )sql";
 
 constexpr const char* kVersion2 = R"sql(
+ALTER TABLE session ADD COLUMN readings_every_ns INTEGER NOT NULL DEFAULT 0;
+ALTER TABLE event RENAME COLUMN clock_synchronised TO clock_trust;
+ALTER TABLE aggregate RENAME COLUMN clock_synchronised TO clock_trust;
+ALTER TABLE frequency RENAME COLUMN clock_synchronised TO clock_trust;
+ALTER TABLE clock_change RENAME COLUMN clock_synchronised TO clock_trust;
+)sql";
+
+constexpr const char* kVersion3 = R"sql(
 CREATE TABLE calibration(
   id INTEGER PRIMARY KEY,
   session INTEGER NOT NULL REFERENCES session(id),
@@ -170,7 +178,7 @@ CREATE TABLE calibration(
   text TEXT NOT NULL);
 )sql";
 
-constexpr std::array<Migration, 2> kMigrations = {{{kVersion1}, {kVersion2}}};
+constexpr std::array<Migration, 3> kMigrations = {{{kVersion1}, {kVersion2}, {kVersion3}}};
 
 /// Each table, index, view and trigger with the statement that made it, by name.
 Result<std::vector<std::string>> objects_of(const Database& database, const char* condition) {

@@ -9,6 +9,7 @@
 #include "tools/commands.hpp"
 #include "tools/json_records.hpp"
 #include "tools/logbook_view.hpp"
+#include "tools/paragraph.hpp"
 #include "tools/question.hpp"
 #include "tools/words.hpp"
 
@@ -39,6 +40,13 @@ std::string remark_of(const storage::Event& event) {
 }
 
 void print_table(const LogbookView& view, const std::vector<storage::EventRow>& events) {
+  std::int64_t every_ns = 0;
+  bool sampled = false;
+  for (const storage::Session& session : view.sessions()) {
+    every_ns = std::max(every_ns, session.begin.readings_every_ns);
+    sampled = sampled || session.begin.readings_every_ns == 0;
+  }
+  if (every_ns > 0) std::cout << indented(readings_text(every_ns, !sampled), 0);
   if (events.empty()) {
     std::cout << "No such event in this period.\n";
     return;

@@ -125,8 +125,11 @@ Result<config::Site> site_of(const Request& request) {
     if (request.rate_hz > 0.0) recording->rate_hz = request.rate_hz;
     if (!request.time_column.empty()) recording->time_column = request.time_column;
     recording->primary = recording->primary || request.primary;
-  } else if (start) {
-    std::get<config::SimulatorSettings>(site.source).begin = start;
+  } else if (auto* simulator = std::get_if<config::SimulatorSettings>(&site.source)) {
+    if (start) simulator->begin = start;
+  } else {
+    return Error{request.site_file, "its source samples as time goes, which an import cannot wait for",
+                 "name a RECORDING, or let tramlined measure"};
   }
   if (!request.into.empty()) site.logbook.path = request.into;
   return site;

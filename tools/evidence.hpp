@@ -31,6 +31,9 @@ struct Evidence {
   std::string program;  ///< what wrote the logbook
   std::string source;   ///< where the samples came from
   bool dated = true;
+  std::int64_t readings_every_ns =
+      0;                      ///< the coarsest of the period's sessions that only had r.m.s. readings
+  bool sampled = false;       ///< a session of the period had samples
   std::optional<UtcNs> from;  ///< as asked; absent: from the first record
   std::optional<UtcNs> to;
   std::vector<Measured> coverage;

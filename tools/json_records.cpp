@@ -51,7 +51,7 @@ ordered_json json_of(const storage::Event& event) {
   json["input_high_v"] = figure(event.input_high_v);
   json["ratio_low"] = figure(event.ratio_low);
   json["ratio_high"] = figure(event.ratio_high);
-  json["clock_synchronised"] = event.clock.synchronised;
+  json["clock"] = std::string(name_of(event.clock.trust));
   json["clock_error_bound_s"] = event.clock.error_bound_ns >= 0
                                     ? ordered_json(seconds(event.clock.error_bound_ns))
                                     : ordered_json(nullptr);

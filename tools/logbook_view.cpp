@@ -62,6 +62,12 @@ bool LogbookView::dated(std::int64_t session) const {
   return found == sessions_.end() || found->begin.dated;
 }
 
+std::int64_t LogbookView::readings_every_ns(std::int64_t session) const {
+  const auto found = std::find_if(sessions_.begin(), sessions_.end(),
+                                  [&](const storage::Session& s) { return s.id == session; });
+  return found == sessions_.end() ? 0 : found->begin.readings_every_ns;
+}
+
 std::string LogbookView::when(const storage::EventRow& row) const {
   if (!dated(row.session)) return config::format_duration(row.event.begin.value) + " from the begin";
   return config::format_in_zone(row.event.begin, site_.zone);
@@ -144,6 +150,9 @@ Result<Evidence> gather(const std::string& path, const std::string& from, const 
   for (const auto& stretch : coverage.value()) {
     evidence.coverage.push_back(
         {stretch.begin, stretch.until, stretch.measured_ns, stretch.why_ended.value_or("")});
+    const std::int64_t every_ns = view.value().readings_every_ns(stretch.session);
+    evidence.readings_every_ns = std::max(evidence.readings_every_ns, every_ns);
+    evidence.sampled = evidence.sampled || every_ns == 0;
   }
   if (auto done = add_calibrations(reader, path, coverage.value(), evidence); !done) return done.error();
   auto intervals = reader.regulator_intervals(period);

@@ -23,6 +23,8 @@ class LogbookView {
 
   /// Whether the records of a session have a date.
   [[nodiscard]] bool dated(std::int64_t session) const;
+  /// Not 0: the session has no samples but r.m.s. readings so far apart.
+  [[nodiscard]] std::int64_t readings_every_ns(std::int64_t session) const;
   /// Begin of an event for people: in the site's zone, or from the recording's begin.
   [[nodiscard]] std::string when(const storage::EventRow& row) const;
 

@@ -259,6 +259,8 @@ void put_coverage(const Evidence& evidence, const VerdictFigures& f, std::string
   if (evidence.records_lost > 0)
     fmt::format_to(std::back_inserter(out), "{} records were lost on the way to the logbook.\n",
                    evidence.records_lost);
+  const std::string clock = evidence.dated ? clock_text(evidence.ten_minutes) : "";
+  if (!clock.empty()) out += clock + "\n";
   if (!evidence.dated) out += "The recording is undated: times count from its begin.\n";
   out += "Samples from: " + evidence.source + "\n";
 }
@@ -303,6 +305,8 @@ std::string verdict_text(const Evidence& evidence, const VerdictFigures& figures
     return out + "no coverage.\n\n" + indented(sentence(evidence, figures), 0);
   out += when(figures.from, evidence) + " to " + when(figures.to, evidence) + "\n\n" +
          indented(sentence(evidence, figures), 0) + "\n";
+  if (evidence.readings_every_ns > 0)
+    out += indented(readings_text(evidence.readings_every_ns, !evidence.sampled), 0) + "\n";
   put_sides(evidence, figures, out);
   if (figures.answer == Answer::not_held) {
     fmt::format_to(std::back_inserter(out), "\n  {:<38}{:<10}in all\n", "excursions of the output, by origin",
@@ -317,7 +321,9 @@ std::string verdict_text(const Evidence& evidence, const VerdictFigures& figures
     const bool same = figures.worst->begin_sample == figures.longest->begin_sample;
     if (!same) put_excursion("Worst", *figures.worst, figures.worst_weighed, evidence, out);
   }
-  if (figures.pairs > 0) {
+  if (figures.pairs > 0 && !evidence.sampled && evidence.readings_every_ns > 0) {
+    out += "\nThe servo's corrections cannot be told from readings so far apart: not measured.\n";
+  } else if (figures.pairs > 0) {
     out += "\n" +
            indented(
                fmt::format(

@@ -116,11 +116,17 @@ std::string verdict_json(const Evidence& evidence, const VerdictFigures& figures
       figures.longest ? json_of(*figures.longest, figures.longest_weighed) : ordered_json(nullptr);
   json["excursions"]["worst"] =
       figures.worst ? json_of(*figures.worst, figures.worst_weighed) : ordered_json(nullptr);
-  json["servo"] = {{"corrections", figures.corrections},
-                   {"reversals", figures.reversals},
-                   {"travel", figures.travel},
-                   {"pairs", figures.pairs},
-                   {"correctable", figures.correctable}};
+  // Readings of a meter lie too far apart to show them.
+  const bool corrections_measured = evidence.sampled || evidence.readings_every_ns == 0;
+  json["servo"] = {{"pairs", figures.pairs}, {"correctable", figures.correctable}};
+  if (corrections_measured) {
+    json["servo"]["corrections"] = figures.corrections;
+    json["servo"]["reversals"] = figures.reversals;
+    json["servo"]["travel"] = figures.travel;
+  }
+  json["readings_every_s"] = evidence.readings_every_ns > 0
+                                 ? ordered_json(seconds(evidence.readings_every_ns))
+                                 : ordered_json(nullptr);
   json["calibration"] = calibration_json(evidence, figures);
   json["source"] = evidence.source;
   json["written_by"] = evidence.program;

@@ -2,7 +2,10 @@
 
 #include <spdlog/fmt/fmt.h>
 
+#include <algorithm>
 #include <cmath>
+
+#include "config/time_text.hpp"
 
 namespace tramline::tools {
 
@@ -32,6 +35,18 @@ std::string_view name_of(storage::Origin origin) {
       break;
   }
   return "not judged";
+}
+
+std::string_view name_of(storage::ClockTrust trust) {
+  switch (trust) {
+    case storage::ClockTrust::synchronised:
+      return "synchronised";
+    case storage::ClockTrust::holdover:
+      return "holdover";
+    case storage::ClockTrust::never_set:
+      break;
+  }
+  return "never set";
 }
 
 std::string_view name_of(storage::EventEnd end) {
@@ -76,6 +91,34 @@ std::string phases_text(std::uint8_t phases) {
     text += name_of(static_cast<Phase>(p));
   }
   return text;
+}
+
+std::string readings_text(std::int64_t every_ns, bool all_of_it) {
+  return fmt::format(
+      "{}r.m.s. readings of a meter every {} were taken: a sag or swell shorter than that, or than the "
+      "meter's "
+      "own averaging, cannot be seen in them, and an event's begin and end are as coarse.",
+      all_of_it ? "Only " : "In part of the period only ", config::format_duration(every_ns));
+}
+
+std::string clock_text(const std::vector<storage::Aggregate>& aggregates) {
+  if (aggregates.empty()) return "";
+  std::size_t unknown = 0;
+  std::size_t holdover = 0;
+  std::int64_t bound_ns = 0;
+  for (const storage::Aggregate& aggregate : aggregates) {
+    unknown += aggregate.clock.trust == storage::ClockTrust::never_set ? 1U : 0U;
+    holdover += aggregate.clock.trust == storage::ClockTrust::holdover ? 1U : 0U;
+    bound_ns = std::max(bound_ns, aggregate.clock.error_bound_ns);
+  }
+  if (unknown > 0) {
+    return fmt::format("Clock: for {} nothing is known of its error; times may be wrong, durations are not.",
+                       unknown == aggregates.size() ? "the whole period" : "part of the period");
+  }
+  const std::string within = config::format_duration(bound_ns);
+  if (holdover > 0)
+    return "Clock: nothing steered it for part of the period; its error stayed within " + within + ".";
+  return "Clock: synchronised, its error within " + within + ".";
 }
 
 }  // namespace tramline::tools

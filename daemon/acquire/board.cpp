@@ -49,16 +49,18 @@ class Board : public Device {
   }
 
   Result<bool> read(Arrival& arrival, std::chrono::milliseconds at_most) override {
-    if (auto taken = take_frames(arrival); !taken) return taken.error();
-    if (arrival.frames == 0) {
+    if (failed_) return *failed_;
+    if (auto taken = take_frames(arrival); !taken) failed_ = taken.error();
+    if (arrival.frames == 0 && !failed_) {
       auto bytes = link_->receive(at_most);
       if (!bytes) return bytes.error();
       if (bytes.value().empty()) return false;
       stamp(came_);
       if (link_->datagrams()) decoder_.forget_rest();
       decoder_.feed(bytes.value());
-      if (auto taken = take_frames(arrival); !taken) return taken.error();
+      if (auto taken = take_frames(arrival); !taken) failed_ = taken.error();
     }
+    if (failed_ && arrival.frames == 0) return *failed_;
     arrival.monotonic_ns = came_.monotonic_ns;
     arrival.utc_ns = came_.utc_ns;
     return arrival.frames > 0;
@@ -164,6 +166,7 @@ class Board : public Device {
   std::vector<std::size_t> columns_;  // of the board, by the site's channels
   std::optional<BoardSamples> held_;  // does not follow what was given before it
   std::optional<std::int64_t> next_;
+  std::optional<Error> failed_;      // given after the frames before it
   std::int64_t refused_before_ = 0;  // bytes before the first hello: the end of a frame, and samples
   Arrival came_;                     // only its times: when the bytes in hand came
 };

@@ -9,13 +9,11 @@ namespace tramline::acquire {
 namespace {
 
 constexpr std::int64_t kSecond = 1'000'000'000;
-constexpr std::size_t kMostStretches = 360;
-constexpr double kLateStretch = 3.0;  // times the median distance from the line
-
-/// While little is known, stretches are short, so that the rate is known soon.
-std::int64_t stretch_ns(std::int64_t since_begin_ns) {
-  return std::clamp(since_begin_ns / 8, kSecond / 4, 10 * kSecond);
-}
+constexpr std::int64_t kShortestStretchNs = kSecond / 4;
+constexpr std::int64_t kLongestStretchNs = 8 * kSecond;
+constexpr std::size_t kMostStretches = 450;      // an hour of the longest
+constexpr std::size_t kMostShortStretches = 32;  // then two become one
+constexpr double kLateStretch = 3.0;             // times the median distance from the line
 
 double median(std::vector<double>& values) {
   const auto middle = values.begin() + static_cast<std::ptrdiff_t>(values.size() / 2);
@@ -37,15 +35,15 @@ void ClockFit::take(std::int64_t samples, std::int64_t monotonic_ns) {
     begun_ = true;
     first_samples_ = samples;
     first_ns_ = monotonic_ns;
+    stretch_ns_ = kShortestStretchNs;
     stretch_begin_ns_ = monotonic_ns;
     next_fit_ns_ = monotonic_ns + kSecond;
   }
   Point point{samples, monotonic_ns, 0.0};
   point.late_ns = static_cast<double>(monotonic_ns - first_ns_) -
                   nominal_ns_ * static_cast<double>(samples - first_samples_);
-  const bool new_stretch =
-      earliest_.empty() || monotonic_ns - stretch_begin_ns_ >= stretch_ns(monotonic_ns - first_ns_);
-  if (new_stretch) {
+  if (earliest_.empty() || monotonic_ns - stretch_begin_ns_ >= stretch_ns_) {
+    if (earliest_.size() >= kMostShortStretches && stretch_ns_ < kLongestStretchNs) join_stretches();
     stretch_begin_ns_ = monotonic_ns;
     earliest_.push_back(point);
     if (earliest_.size() > kMostStretches) earliest_.pop_front();
@@ -59,8 +57,20 @@ void ClockFit::take(std::int64_t samples, std::int64_t monotonic_ns) {
   }
 }
 
+void ClockFit::join_stretches() {
+  for (std::size_t i = 0; i + 1 < earliest_.size(); i += 2) {
+    const Point& one = earliest_[i];
+    const Point& other = earliest_[i + 1];
+    earliest_[i / 2] = off_line(other) < off_line(one) ? other : one;
+  }
+  earliest_.resize(earliest_.size() / 2);
+  stretch_ns_ *= 2;
+}
+
 void ClockFit::fit() {
-  if (earliest_.size() < 4) return;
+  // The last stretch is in the making: its earliest arrival is not yet as early as those of the others.
+  const std::size_t whole = earliest_.size() - 1;
+  if (whole < 4) return;
   std::vector<double> distances;
   double limit_ns = INFINITY;
   double mean_distance = 0.0;
@@ -73,7 +83,8 @@ void ClockFit::fit() {
       return round == 0 || std::abs(off_line(point) - mean_distance) <= limit_ns;
     };
     std::vector<const Point*> kept;
-    for (const Point& point : earliest_) {
+    for (std::size_t i = 0; i < whole; ++i) {
+      const Point& point = earliest_[i];
       if (!counts(point)) continue;
       kept.push_back(&point);
       n += 1.0;
@@ -102,8 +113,8 @@ void ClockFit::fit() {
     rate_error_ppm_ = std::sqrt(squares / std::max(1.0, n - 2.0) / xx) / ns_a_sample_ * 1e6;
 
     distances.clear();
-    for (const Point& point : earliest_)
-      distances.push_back(off_line(point));
+    for (std::size_t i = 0; i < whole; ++i)
+      distances.push_back(off_line(earliest_[i]));
     mean_distance = median(distances);
     for (double& distance : distances)
       distance = std::abs(distance - mean_distance);
@@ -111,8 +122,7 @@ void ClockFit::fit() {
   }
   measured_ = true;
   double furthest = 0.0;
-  const std::size_t recent = std::min<std::size_t>(earliest_.size(), 12);
-  for (std::size_t i = earliest_.size() - recent; i < earliest_.size(); ++i)
+  for (std::size_t i = whole - std::min<std::size_t>(whole, 12); i < whole; ++i)
     furthest = std::max(furthest, std::abs(off_line(earliest_[i])));
   spread_ns_ = std::llround(furthest);
 }

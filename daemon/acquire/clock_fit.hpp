@@ -8,10 +8,11 @@ namespace tramline::acquire {
 /// The true sample rate, and when a sample was taken, from many pairs (sample count, time of arrival).
 ///
 /// Frames arrive late by a latency that is never negative and now and then large (the scheduler was busy), so
-/// a mean would follow the disturbances. Of each stretch of about ten seconds only the earliest arrival
-/// counts, earliest against the line so far; a straight line by least squares goes through those of the
-/// last hour, without the stretches whose earliest arrival was itself late (further off the line than three
-/// times the median distance). Pure: takes times, reads none. One thread; memory is bounded.
+/// a mean would follow the disturbances. Of each stretch (eight seconds; a quarter of a second at first, then
+/// two become one) only the earliest arrival counts, earliest against the line so far; a straight line by
+/// least squares goes through those of the last hour, without the stretches whose earliest arrival was itself
+/// late (further off the line than three times the median distance). Pure: takes times, reads none. One
+/// thread; memory is bounded.
 class ClockFit {
  public:
   explicit ClockFit(double nominal_hz);
@@ -37,13 +38,15 @@ class ClockFit {
     double late_ns = 0.0;  // against the nominal rate, from the first pair: the line is fitted to this
   };
   [[nodiscard]] double off_line(const Point& point) const;
+  void join_stretches();
   void fit();
 
   double nominal_ns_;
   bool begun_ = false;
   std::int64_t first_samples_ = 0;
   std::int64_t first_ns_ = 0;
-  std::deque<Point> earliest_;  // of each stretch; the last one is in the making
+  std::deque<Point> earliest_;   // of each stretch; the last one is in the making
+  std::int64_t stretch_ns_ = 0;  // all have the same length, so that none is earlier for being longer
   std::int64_t stretch_begin_ns_ = 0;
   std::int64_t next_fit_ns_ = 0;
   double ns_a_sample_;

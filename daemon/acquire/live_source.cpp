@@ -69,7 +69,7 @@ void LiveSource::run() {
     refused_bytes_ = device_->refused_bytes();
     if (!came) return fail(came.error());
     if (came.value() && arrival.frames > 0) {
-      last_ns = arrival.monotonic_ns;
+      last_ns = monotonic_ns();
       const std::lock_guard guard(lock_);
       if (waiting_frames_ + arrival.frames > most_waiting && !waiting_.empty()) {
         overrun_frames_ += static_cast<std::int64_t>(arrival.frames);

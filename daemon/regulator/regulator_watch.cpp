@@ -11,18 +11,18 @@ constexpr double kLeastInput = 0.10;  // of nominal: below, a ratio means nothin
 
 }  // namespace
 
-RegulatorWatch::PhaseWatch::PhaseWatch(Phase of, const config::Site& site)
+RegulatorWatch::PhaseWatch::PhaseWatch(Phase of, const config::Site& site, bool sampled)
     : phase(of),
       pairs(site.has(Side::input), site.has(Side::output), kLeastInput * site.nominal_v),
       keeping(of, site),
       excursions(of, site) {
   if (site.regulator) {
     ideal.emplace(*site.regulator, site.nominal_v);
-    corrections.emplace(*site.regulator, site.nominal_v);
+    if (sampled) corrections.emplace(*site.regulator, site.nominal_v);
   }
 }
 
-RegulatorWatch::RegulatorWatch(const config::Site& site)
+RegulatorWatch::RegulatorWatch(const config::Site& site, bool sampled)
     : site_(site),
       band_(site.tolerated_band()),
       both_sides_(site.has(Side::input) && site.has(Side::output)) {
@@ -32,7 +32,7 @@ RegulatorWatch::RegulatorWatch(const config::Site& site)
         std::any_of(phases_.begin(), phases_.end(), [&](const PhaseWatch& p) { return p.phase == phase; });
     if (known) continue;
     place_of_[static_cast<std::size_t>(phase)] = phases_.size();
-    phases_.emplace_back(phase, site);
+    phases_.emplace_back(phase, site, sampled);
   }
 }
 
@@ -86,7 +86,6 @@ void RegulatorWatch::take(const HalfCyclePair& pair, PhaseWatch& phase, std::vec
 
 void RegulatorWatch::take(const measure::EventMark& mark, std::vector<storage::Record>& out) {
   storage::Event event = mark.event;
-  clock_ = event.clock;
   if (event.side == Side::output) output_shows();
   const auto same = [&](const OpenEvent& open) {
     return open.side == event.side && open.kind == event.kind && open.begin_sample == event.begin_sample;

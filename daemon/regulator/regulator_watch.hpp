@@ -26,8 +26,12 @@ namespace tramline::regulator {
 /// no clock, no I/O. One thread.
 class RegulatorWatch {
  public:
-  /// `site` must outlive the watch.
-  explicit RegulatorWatch(const config::Site& site);
+  /// `site` must outlive the watch. `sampled` false: the half-cycle values are a polled meter's readings, too
+  /// far apart to show the servo's movements, so no corrections are given.
+  explicit RegulatorWatch(const config::Site& site, bool sampled = true);
+
+  /// State of the clock, for the events to come.
+  void clock_state(const storage::ClockState& state) { clock_ = state; }
 
   /// Takes the meter's next output; appends events and the regulator's own records.
   void take(const measure::MeterOutput& metered, std::vector<storage::Record>& out);
@@ -38,7 +42,7 @@ class RegulatorWatch {
  private:
   /// One phase of the regulator.
   struct PhaseWatch {
-    PhaseWatch(Phase phase, const config::Site& site);
+    PhaseWatch(Phase phase, const config::Site& site, bool sampled);
     Phase phase;
     PairMaker pairs;
     BandKeeping keeping;

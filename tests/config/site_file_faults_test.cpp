@@ -133,7 +133,7 @@ TEST(SiteFileFaults, TellsAllOfAFileAtOnceEachWithItsPlace) {
       "V",
       "21:10: capture is 100; keys with values are expected here, each as key: value",
       "22:1: colour is not a key here; known here: site, channels, events, regulator, capture, "
-      "logbook, "
+      "logbook, clock, "
       "source",
       "25:14: source.real_time is no; real_time is true or false",
       "26:10: source.begin is 2026-03-01: the offset from UTC is missing; write a time with its offset from "

@@ -92,7 +92,7 @@ Event sag(std::int64_t begin_s, EventEnd end = EventEnd::recovered) {
   event.reason = "the supply's doing; DROP TABLE event; --'";
   event.held_off = true;
   event.input_low_v = 131.25;
-  event.clock = {true, 1'500'000};
+  event.clock = {ClockTrust::holdover, 1'500'000};
   return event;
 }
 
@@ -183,8 +183,9 @@ TEST_F(Logbook, EveryOtherKindOfRecordComesBackAsWell) {
   interval.travel = 0.25;
   write(to, {interval, Correction{Phase::l1, {64}, {10}, {20}, 1.0, 1.17, 20.0},
              Frequency{{0}, {10 * kSecond}, 49.98, 499, false, true, {}},
-             ClockChange{{7}, "the clock was set", -3, {true, 5}}, Loss{{8}, "aggregates dropped", 4},
-             SettingsInForce{{0}, "site: {}"}, CoverageProgress{{60 * kSecond}, 60 * kSecond}});
+             ClockChange{{7}, "the clock was set", -3, {ClockTrust::synchronised, 5}},
+             Loss{{8}, "aggregates dropped", 4}, SettingsInForce{{0}, "site: {}"},
+             CoverageProgress{{60 * kSecond}, 60 * kSecond}});
   Waveform waveform;
   waveform.begin = {100};
   waveform.end = {200};
@@ -292,13 +293,14 @@ TEST_F(Logbook, TheImportOfAnOldRecordingDoesNotUndoTheCalibrationOfTheDaemonsTi
   EXPECT_EQ(reader().calibration(UtcNs{60 * kSecond}).value(), "");
 }
 
-TEST_F(Logbook, ALogbookOfVersion1IsReadAsItIsAndBroughtForwardByItsWriter) {
+TEST_F(Logbook, ALogbookWithoutCalibrationsIsReadAsItIsAndBroughtForwardByItsWriter) {
   {
     auto opened = Database::open(path_, Database::Mode::read_write_create);
     ASSERT_TRUE(opened);
     ASSERT_TRUE(opened.value().execute("PRAGMA application_id=" + std::to_string(kApplicationId)));
-    ASSERT_TRUE(migrate(opened.value(), migrations().first(1)));
-    ASSERT_TRUE(opened.value().execute("INSERT INTO session VALUES(1,'old','a source',6400,1,0,'stopped')"));
+    ASSERT_TRUE(migrate(opened.value(), migrations().first(2)));
+    ASSERT_TRUE(
+        opened.value().execute("INSERT INTO session VALUES(1,'old','a source',6400,1,0,'stopped',0)"));
   }
   EXPECT_EQ(reader().calibration(std::nullopt).value(), "");
   EXPECT_TRUE(reader().calibrations().value().empty());
@@ -342,7 +344,7 @@ TEST_F(Logbook, SomebodyElsesDatabaseIsRefusedEvenByTheDaemon) {
 TEST_F(Logbook, ALogbookOfANewerSchemaIsRefusedWithBothVersions) {
   { auto to = writer(); }
   sql("PRAGMA user_version=7");
-  EXPECT_THAT(refusal(), HasSubstr("schema 7; this program knows up to 2"));
+  EXPECT_THAT(refusal(), HasSubstr("schema 7; this program knows up to " + std::to_string(newest_schema())));
   EXPECT_THAT(LogbookReader::open(path_).error().text(), HasSubstr("newer version"));
 }
 
@@ -489,7 +491,7 @@ TEST_F(Logbook, AnEventThatGoesOnReachesIntoEveryLaterPeriod) {
 
 TEST_F(Logbook, DetailOfAnUndatedSessionHasNoAge) {
   auto to = writer();
-  write(to, {SessionBegin{"test 1", "a source", 6400.0, false, UtcNs{0}},
+  write(to, {SessionBegin{"test 1", "a source", 1000.0, false, UtcNs{0}, kSecond},
              aggregate(Interval::three_seconds, 0, 1)});
   ASSERT_TRUE(to.prune({1'800'000'000 * kSecond}, {}));
   EXPECT_EQ(reader().aggregates(Interval::three_seconds, {}).value().size(), 1U);
