@@ -172,7 +172,9 @@ void LiveSource::give(measure::Block& block, std::size_t from, std::size_t frame
     bool at_limit = false;
     for (std::size_t c = 0; c < width; ++c) {
       const double raw = current_.values[i * width + c];
-      const double volts = (raw + channels_[c].offset) * channels_[c].scale;
+      double volts = (raw + channels_[c].offset) * channels_[c].scale;
+      // The line that calibrates a meter of r.m.s. values may lead below zero, where there are none.
+      if (info_.readings_every_s > 0.0 && volts < 0.0) volts = 0.0;
       frames_.push_back(static_cast<float>(volts));
       if (channels_[c].range_v > 0.0 && std::abs(volts) >= channels_[c].range_v) {
         block.over_range.push_back({c, place + i - from, 1});

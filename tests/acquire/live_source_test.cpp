@@ -254,6 +254,8 @@ TEST(LiveSource, GivesReadingsOfAMeterOneByOneAndWithoutGaps) {
     EXPECT_EQ(block.first.value, at);
     EXPECT_EQ(block.gap, GapCause::none);
     EXPECT_FALSE(block.anchor);
+    EXPECT_EQ(block.channel(0).front(), (static_cast<float>(at) + 1.0F) * 2.0F);
+    EXPECT_EQ(block.channel(1).front(), 0.0F);  // of an r.m.s. value less than nothing is nothing
   }
 }
 
