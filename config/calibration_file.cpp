@@ -57,7 +57,7 @@ void check(MapReader& map, const ChannelCalibration& c) {
 ChannelCalibration read_channel(MapReader& map) {
   ChannelCalibration c;
   map.word<Side>("side", c.channel.side, kSides, "the side of a channel", kRequired);
-  map.word<Phase>("phase", c.channel.phase, kPhases, "the phase of a channel");
+  map.word<Phase>("phase", c.channel.phase, kPhases, "the phase of a channel", kRequired);
   std::optional<UtcNs> date;
   const bool date_sound = map.instant("date", date, kRequired);
   if (date) c.date = *date;

@@ -2,6 +2,7 @@
 
 #include <spdlog/fmt/fmt.h>
 
+#include <cmath>
 #include <iterator>
 #include <nlohmann/json.hpp>
 
@@ -33,7 +34,8 @@ std::string comparison_text(const CalibrationFigures& figures, const ChannelCali
         ac ? fmt::format("{:+.3f} V {:+.2f} %", r.error_v, 100.0 * r.error_v / r.reading.reference_v)
            : fmt::format("{:+.3f} V        ", r.error_v);
     fmt::format_to(put, "  {:<6}{:>14.3f}{:>14.3f}{:>22}{:>+14.3f}\n", kind_text(r.reading.kind),
-                   r.reading.shown_v, r.reading.reference_v, error, r.residual_v + 0.0);
+                   r.reading.shown_v, r.reading.reference_v, error,
+                   std::round(r.residual_v * 1e3) / 1e3 + 0.0);
   }
   fmt::format_to(
       put, "\nGain {:.7g}, offset {:.5g} V{}: volts = (site file's volts + offset) x gain.\n", entry.gain,

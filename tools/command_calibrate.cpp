@@ -265,6 +265,9 @@ Status take_readings(const Request& request, const config::Site& site,
     if (auto sound = check_logger_has_it(logbook, settings); !sound) return sound;
   }
   if (request.at.empty()) return kDone;
+  if (comparison.rms_only)
+    return wrong("--at", "of a meter that is polled the logbook keeps no 3-s values",
+                 "read both displays at the same time and give --reading");
 
   if (logbook.empty())
     return wrong("--at", "no logbook is named", "give --logbook, or logbook.path in the site file");
@@ -280,8 +283,7 @@ Status take_readings(const Request& request, const config::Site& site,
     if (!time) return time.error();
     const double allowed_v =
         std::hypot(comparison.reference_expanded_pct / 100.0 * *reference_v, comparison.reference_expanded_v);
-    auto reading =
-        logged_reading(reader.value(), time.value(), *reference_v, allowed_v, settings, comparison.rms_only);
+    auto reading = logged_reading(reader.value(), time.value(), *reference_v, allowed_v, settings);
     if (!reading) return wrong("--at " + text, reading.error().what, reading.error().remedy);
     comparison.readings.push_back(reading.value());
     latest = std::max(latest, time.value());

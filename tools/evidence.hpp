@@ -19,6 +19,12 @@ struct Measured {
   std::string why_ended;  ///< empty while it goes on
 };
 
+/// What the sensors were calibrated with, from a time on.
+struct CalibrationSince {
+  UtcNs from;
+  config::Calibration calibration;  ///< without channels: they were not
+};
+
 /// What the verdict is drawn from: the records of the period asked about.
 struct Evidence {
   config::Site site;
@@ -31,6 +37,8 @@ struct Evidence {
   std::optional<UtcNs> from;  ///< as asked; absent: from the first record
   std::optional<UtcNs> to;
   std::vector<Measured> coverage;
+  std::vector<CalibrationSince>
+      calibrations;  ///< that the period was measured with, a new one for each change
   std::vector<storage::RegulatorInterval> intervals;
   std::vector<storage::Aggregate> ten_minutes;
   std::vector<storage::Event> events;

@@ -3,6 +3,7 @@
 #include <algorithm>
 #include <utility>
 
+#include "config/calibration_file.hpp"
 #include "config/site_file.hpp"
 #include "config/time_text.hpp"
 #include "tools/evidence.hpp"
@@ -99,6 +100,36 @@ Result<storage::Waveform> LogbookView::waveform_of(const storage::EventRow& row,
   return reader_.waveform(around_end ? found.value().back().id : found.value().front().id);
 }
 
+namespace {
+
+/// A calibration changes between sessions only: each stretch has that of its session.
+Status add_calibrations(const storage::LogbookReader& reader, const std::string& path,
+                        const std::vector<storage::CoverageStretch>& coverage, Evidence& evidence) {
+  const auto rows = reader.calibrations();
+  if (!rows) return rows.error();
+  for (const storage::CoverageStretch& stretch : coverage) {
+    std::string text;
+    for (const storage::CalibrationRow& row : rows.value()) {
+      if (row.session <= stretch.session) text = row.calibration.text;
+    }
+    if (!evidence.calibrations.empty() && evidence.calibrations.back().calibration.text == text) continue;
+    CalibrationSince since{stretch.begin, {}};
+    if (!text.empty()) {
+      config::Findings findings;
+      since.calibration = config::parse_calibration(text, "calibration in the logbook", findings);
+      if (!findings.faults.empty())
+        return Error{path,
+                     "the calibration kept in the logbook is not understood: " +
+                         findings.faults.front().text("calibration"),
+                     "use a newer version"};
+    }
+    evidence.calibrations.push_back(std::move(since));
+  }
+  return kDone;
+}
+
+}  // namespace
+
 Result<Evidence> gather(const std::string& path, const std::string& from, const std::string& to) {
   auto view = open_view(path, from, to);
   if (!view) return view.error();
@@ -123,6 +154,7 @@ Result<Evidence> gather(const std::string& path, const std::string& from, const 
     evidence.readings_every_ns = std::max(evidence.readings_every_ns, every_ns);
     evidence.sampled = evidence.sampled || every_ns == 0;
   }
+  if (auto done = add_calibrations(reader, path, coverage.value(), evidence); !done) return done.error();
   auto intervals = reader.regulator_intervals(period);
   if (!intervals) return intervals.error();
   evidence.intervals = std::move(intervals).value();

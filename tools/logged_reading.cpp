@@ -43,7 +43,7 @@ Result<std::optional<config::ChannelSettings>> channel_in_force(const storage::L
 }
 
 Result<SensorReading> logged_reading(const storage::LogbookReader& reader, UtcNs at, double reference_v,
-                                     double allowed_v, const config::ChannelSettings& now, bool rms_only) {
+                                     double allowed_v, const config::ChannelSettings& now) {
   const auto then = channel_in_force(reader, now.channel, at);
   if (!then) return then.error();
   auto found = reader.aggregates(storage::Interval::three_seconds, {at - kAroundNs, at + kAroundNs});
@@ -67,8 +67,7 @@ Result<SensorReading> logged_reading(const storage::LogbookReader& reader, UtcNs
     if (a.over_range) return no_value("the sensor stood at its limit", "compare within its range");
     if (a.partial || std::isnan(a.u_rms_v))
       return no_value("not all of it was measured", "compare while the daemon measures without a gap");
-    const double volts = rms_only ? (a.u_rms_v / was.scale - was.offset + now.offset) * now.scale
-                                  : a.u_rms_v * std::abs(now.scale / was.scale);
+    const double volts = a.u_rms_v * std::abs(now.scale / was.scale);
     shown.push_back(volts);
     squares += volts * volts;
   }

@@ -16,7 +16,7 @@ namespace tramline::tools {
 /// `where` is left to the caller.
 [[nodiscard]] Result<SensorReading> logged_reading(const storage::LogbookReader& reader, UtcNs at,
                                                    double reference_v, double allowed_v,
-                                                   const config::ChannelSettings& now, bool rms_only);
+                                                   const config::ChannelSettings& now);
 
 /// Settings of a channel, calibration included, as they were in force at a time (at the end, without one).
 /// Nothing: the logbook's site had no such channel.

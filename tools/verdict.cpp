@@ -7,6 +7,7 @@
 #include <iterator>
 
 #include "config/time_text.hpp"
+#include "tools/calibration_words.hpp"
 #include "tools/paragraph.hpp"
 #include "tools/words.hpp"
 
@@ -58,6 +59,26 @@ void add_event(const storage::Event& event, const Evidence& evidence, VerdictFig
   const double target = evidence.site.regulator ? evidence.site.regulator->target_v : evidence.site.nominal_v;
   const auto distance = [&](const storage::Event& e) { return std::abs(e.extreme_v - target); };
   if (!figures.worst || distance(event) > distance(*figures.worst)) figures.worst = event;
+}
+
+/// Nothing if the sensor of the event was not calibrated when it began.
+std::optional<Weighed> weighed(const storage::Event& event, const Evidence& evidence,
+                               const config::Site::Band& band) {
+  const CalibrationSince* in_force = nullptr;
+  for (const CalibrationSince& since : evidence.calibrations) {
+    if (in_force == nullptr || since.from <= event.begin) in_force = &since;
+  }
+  const auto* calibration =
+      in_force == nullptr ? nullptr : in_force->calibration.of({event.side, event.worst_phase});
+  if (calibration == nullptr || std::isnan(event.extreme_v)) return std::nullopt;
+  Weighed w;
+  w.which = event.extreme_v < (band.low_v + band.high_v) / 2.0 ? Limit::lower : Limit::upper;
+  w.limit_v = w.which == Limit::lower ? band.low_v : band.high_v;
+  w.expanded_v = config::expanded_v_at(*calibration, event.extreme_v);
+  w.allowance = allowance(event.extreme_v, w.limit_v, w.which, w.expanded_v);
+  // What lies beyond a bound can only be further out.
+  if (event.extreme_is_bound && w.allowance != Allowance::outside) w.allowance = Allowance::undecided;
+  return w;
 }
 
 Answer answer_of(const Evidence& evidence, const VerdictFigures& figures) {
@@ -175,8 +196,8 @@ void put_sides(const Evidence& evidence, const VerdictFigures& f, std::string& o
   }
 }
 
-void put_excursion(std::string_view which, const storage::Event& event, const Evidence& evidence,
-                   std::string& out) {
+void put_excursion(std::string_view which, const storage::Event& event, const std::optional<Weighed>& of,
+                   const Evidence& evidence, std::string& out) {
   fmt::format_to(
       std::back_inserter(out), "\n{}: {}, {} for {}{}; origin: {}.\n", which, when(event.begin, evidence),
       volts_text(event.extreme_v) + (event.extreme_is_bound ? " or beyond" : ""),
@@ -185,6 +206,40 @@ void put_excursion(std::string_view which, const storage::Event& event, const Ev
                                                        : ", " + std::string(name_of(event.end_reason)),
       name_of(event.origin));
   if (!event.reason.empty()) out += indented(event.reason + ".", 2);
+  if (of) {
+    out += indented(fmt::format("Against the band's {} edge, {:.1f} V, and good for ±{} V: {}.",
+                                of->which == Limit::lower ? "lower" : "upper", of->limit_v,
+                                uncertainty_text(of->expanded_v), words_for(of->allowance)),
+                    2);
+  }
+}
+
+void put_calibration(const Evidence& evidence, const VerdictFigures& figures, std::string& out) {
+  const bool any =
+      std::any_of(evidence.calibrations.begin(), evidence.calibrations.end(),
+                  [](const CalibrationSince& since) { return !since.calibration.channels.empty(); });
+  if (!any) {
+    out +=
+        "\nNo calibration: voltages rest on the site file's scale alone, their uncertainty is not stated.\n";
+    return;
+  }
+  out += "\nCalibration of the sensors at the end of the period:\n";
+  for (const config::ChannelSettings& settings : evidence.site.channels) {
+    const auto* calibration = evidence.calibrations.back().calibration.of(settings.channel);
+    fmt::format_to(
+        std::back_inserter(out), "  {:<11}{}\n", config::name_of(settings.channel),
+        calibration == nullptr
+            ? "no calibration: rests on the site file's scale alone, uncertainty not stated"
+            : calibration_words(*calibration, evidence.site.nominal_v, evidence.site.zone, figures.to));
+  }
+  if (evidence.calibrations.size() == 1) return;
+  std::string changes;
+  for (std::size_t i = 1; i < evidence.calibrations.size(); ++i)
+    changes += (changes.empty() ? "" : ", ") + when(evidence.calibrations[i].from, evidence);
+  out +=
+      indented("The calibration changed within the period (" + changes +
+                   "): extremes and shares join voltages of both; see `tramline calibrate --show --logbook`.",
+               0);
 }
 
 void put_coverage(const Evidence& evidence, const VerdictFigures& f, std::string& out) {
@@ -238,6 +293,8 @@ VerdictFigures verdict_figures(const Evidence& evidence) {
   }
   for (const auto& event : evidence.events)
     add_event(event, evidence, figures);
+  if (figures.longest) figures.longest_weighed = weighed(*figures.longest, evidence, figures.band);
+  if (figures.worst) figures.worst_weighed = weighed(*figures.worst, evidence, figures.band);
   figures.answer = answer_of(evidence, figures);
   return figures;
 }
@@ -260,9 +317,9 @@ std::string verdict_text(const Evidence& evidence, const VerdictFigures& figures
       fmt::format_to(std::back_inserter(out), "  {:<38}{:<10}{}\n", name_of(origin), of.times,
                      of.times > 0 ? format_duration(of.total_ns) : "");
     }
-    put_excursion("Longest", *figures.longest, evidence, out);
+    put_excursion("Longest", *figures.longest, figures.longest_weighed, evidence, out);
     const bool same = figures.worst->begin_sample == figures.longest->begin_sample;
-    if (!same) put_excursion("Worst", *figures.worst, evidence, out);
+    if (!same) put_excursion("Worst", *figures.worst, figures.worst_weighed, evidence, out);
   }
   if (figures.pairs > 0 && !evidence.sampled && evidence.readings_every_ns > 0) {
     out += "\nThe servo's corrections cannot be told from readings so far apart: not measured.\n";
@@ -277,6 +334,7 @@ std::string verdict_text(const Evidence& evidence, const VerdictFigures& figures
                    share_text(static_cast<double>(figures.correctable), static_cast<double>(figures.pairs))),
                0);
   }
+  put_calibration(evidence, figures, out);
   put_coverage(evidence, figures, out);
   return out;
 }

@@ -8,6 +8,7 @@
 
 #include "config/site.hpp"
 #include "storage/records.hpp"
+#include "tools/allowance.hpp"
 #include "tools/evidence.hpp"
 
 /// Did the regulator hold its band, and if not, who is to blame: from the records to figures, and from those
@@ -45,6 +46,14 @@ struct OfSide {
   std::int64_t held_off = 0;             ///< input only: events the output did not show
 };
 
+/// An excursion's extreme against the edge of the band, allowing for the uncertainty of the sensor.
+struct Weighed {
+  Limit which = Limit::lower;
+  double limit_v = 0.0;
+  double expanded_v = 0.0;  ///< expanded uncertainty of the extreme
+  Allowance allowance = Allowance::undecided;
+};
+
 struct VerdictFigures {
   Answer answer = Answer::nothing_measured;
   config::Site::Band band{};
@@ -60,7 +69,9 @@ struct VerdictFigures {
   std::int64_t excursions_ns = 0;
   std::array<OfOrigin, 4> by_origin{};  ///< by storage::Origin
   std::optional<storage::Event> longest;
-  std::optional<storage::Event> worst;  ///< furthest from the target
+  std::optional<storage::Event> worst;     ///< furthest from the target
+  std::optional<Weighed> longest_weighed;  ///< absent: its sensor was not calibrated, or there is none
+  std::optional<Weighed> worst_weighed;
   std::int64_t pairs = 0;
   std::int64_t correctable = 0;
   std::int64_t corrections = 0;

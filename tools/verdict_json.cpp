@@ -2,6 +2,7 @@
 #include <nlohmann/json.hpp>
 
 #include "config/time_text.hpp"
+#include "tools/calibration_words.hpp"
 #include "tools/json_records.hpp"
 #include "tools/verdict.hpp"
 #include "tools/words.hpp"
@@ -51,6 +52,35 @@ ordered_json json_of(const OfSide& side) {
   return json;
 }
 
+ordered_json json_of(const storage::Event& event, const std::optional<Weighed>& weighed) {
+  ordered_json json = tools::json_of(event);
+  json["allowing_for_uncertainty"] = weighed
+                                         ? ordered_json{{"answer", std::string(name_of(weighed->allowance))},
+                                                        {"limit_v", weighed->limit_v},
+                                                        {"expanded_v", weighed->expanded_v}}
+                                         : ordered_json(nullptr);
+  return json;
+}
+
+ordered_json calibration_json(const Evidence& evidence, const VerdictFigures& figures) {
+  ordered_json json{{"in_force", ordered_json::array()},
+                    {"not_calibrated", ordered_json::array()},
+                    {"changed_at", ordered_json::array()}};
+  for (const config::ChannelSettings& settings : evidence.site.channels) {
+    const auto* calibration = evidence.calibrations.empty()
+                                  ? nullptr
+                                  : evidence.calibrations.back().calibration.of(settings.channel);
+    if (calibration == nullptr) {
+      json["not_calibrated"].push_back(config::name_of(settings.channel));
+    } else {
+      json["in_force"].push_back(tools::json_of(*calibration, evidence.site.nominal_v, figures.to));
+    }
+  }
+  for (std::size_t i = 1; i < evidence.calibrations.size(); ++i)
+    json["changed_at"].push_back(config::format_utc(evidence.calibrations[i].from));
+  return json;
+}
+
 }  // namespace
 
 std::string verdict_json(const Evidence& evidence, const VerdictFigures& figures) {
@@ -82,8 +112,10 @@ std::string verdict_json(const Evidence& evidence, const VerdictFigures& figures
   }
   json["excursions"] = {
       {"times", figures.excursions}, {"total_s", seconds(figures.excursions_ns)}, {"by_origin", origins}};
-  json["excursions"]["longest"] = figures.longest ? json_of(*figures.longest) : ordered_json(nullptr);
-  json["excursions"]["worst"] = figures.worst ? json_of(*figures.worst) : ordered_json(nullptr);
+  json["excursions"]["longest"] =
+      figures.longest ? json_of(*figures.longest, figures.longest_weighed) : ordered_json(nullptr);
+  json["excursions"]["worst"] =
+      figures.worst ? json_of(*figures.worst, figures.worst_weighed) : ordered_json(nullptr);
   // Readings of a meter lie too far apart to show them.
   const bool corrections_measured = evidence.sampled || evidence.readings_every_ns == 0;
   json["servo"] = {{"pairs", figures.pairs}, {"correctable", figures.correctable}};
@@ -95,6 +127,7 @@ std::string verdict_json(const Evidence& evidence, const VerdictFigures& figures
   json["readings_every_s"] = evidence.readings_every_ns > 0
                                  ? ordered_json(seconds(evidence.readings_every_ns))
                                  : ordered_json(nullptr);
+  json["calibration"] = calibration_json(evidence, figures);
   json["source"] = evidence.source;
   json["written_by"] = evidence.program;
   return json.dump(2) + "\n";

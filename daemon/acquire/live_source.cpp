@@ -85,7 +85,12 @@ void LiveSource::run() {
 }
 
 void LiveSource::hand_over(Arrival& arrival) {
-  if (dropped_) arrival.gap = measure::GapCause::overrun;
+  if (dropped_) {
+    arrival.gap = measure::GapCause::overrun;
+  } else if (arrival.gap == measure::GapCause::overrun && expected_ && arrival.first > *expected_) {
+    overrun_frames_ += arrival.first - *expected_;  // by the device's own word
+  }
+  expected_ = arrival.first + static_cast<std::int64_t>(arrival.frames);
   dropped_ = false;
   waiting_frames_ += arrival.frames;
   waiting_.push_back(std::move(arrival));
@@ -172,7 +177,9 @@ void LiveSource::give(measure::Block& block, std::size_t from, std::size_t frame
     bool at_limit = false;
     for (std::size_t c = 0; c < width; ++c) {
       const double raw = current_.values[i * width + c];
-      const double volts = (raw + channels_[c].offset) * channels_[c].scale;
+      double volts = (raw + channels_[c].offset) * channels_[c].scale;
+      // The line that calibrates a meter of r.m.s. values may lead below zero, where there are none.
+      if (info_.readings_every_s > 0.0 && volts < 0.0) volts = 0.0;
       frames_.push_back(static_cast<float>(volts));
       if (channels_[c].range_v > 0.0 && std::abs(volts) >= channels_[c].range_v) {
         block.over_range.push_back({c, place + i - from, 1});

@@ -63,7 +63,8 @@ class LiveSource : public Source {
   std::size_t waiting_frames_ = 0;
   std::vector<Arrival> emptied_;  // to be filled again
   std::int64_t overrun_frames_ = 0;
-  bool dropped_ = false;  // since the newest in `waiting_`
+  bool dropped_ = false;                  // since the newest in `waiting_`
+  std::optional<std::int64_t> expected_;  // what follows that one without a gap
   std::atomic<std::int64_t> refused_bytes_{0};
   std::atomic<bool> stop_{false};
 

@@ -239,6 +239,16 @@ TEST(LiveSource, DropsAndCountsWhatNobodyTakes) {
   EXPECT_EQ(source->health().overrun_frames, 6000);
 }
 
+TEST(LiveSource, CountsWhatTheDeviceSaysItDidNotTakeInTime) {
+  const auto source = source_of({{0, 10, 1.0}, {35, 10, 1.045, 1e9, GapCause::overrun}});
+  ASSERT_FALSE(await_ready(*source));
+  Taken taken;
+  take(*source, 20, taken);
+  EXPECT_THAT(taken.gaps, ElementsAre(GapCause::overrun));
+  EXPECT_EQ(source->health().overrun_frames, 25);
+  EXPECT_EQ(source->health().lost_frames, 0);
+}
+
 TEST(LiveSource, GivesReadingsOfAMeterOneByOneAndWithoutGaps) {
   const auto source =
       source_of({{0, 1, 10.0}, {1001, 1, 11.001}, {1999, 1, 11.999}, {5000, 1, 15.0}}, 1000.0, 1.0);
@@ -254,6 +264,8 @@ TEST(LiveSource, GivesReadingsOfAMeterOneByOneAndWithoutGaps) {
     EXPECT_EQ(block.first.value, at);
     EXPECT_EQ(block.gap, GapCause::none);
     EXPECT_FALSE(block.anchor);
+    EXPECT_EQ(block.channel(0).front(), (static_cast<float>(at) + 1.0F) * 2.0F);
+    EXPECT_EQ(block.channel(1).front(), 0.0F);  // of an r.m.s. value less than nothing is nothing
   }
 }
 

@@ -241,6 +241,157 @@ source: {{kind: recording, path: {table}, begin: 2026-03-01T00:00:00Z}}
             self.assertEqual(self.run_program(TRAMLINED, *options, site).returncode, 2, options)
 
 
+CALIBRATED = """\
+site: {{name: Plant, zone: UTC, nominal_v: 220, frequency_hz: 50}}
+channels: [{{side: input, scale: {scale}}}, {{side: output}}]
+regulator: {{target_v: 220, band_v: [215, 225], input_v: [160, 270], speed_v_per_s: 20}}
+logbook: {{path: {logbook}}}
+source:
+  kind: simulator
+  rate_hz: 3200
+  real_time: false
+  begin: {begin}
+  run_for: 60s
+  grid: {{wander_pct: 0, voltage_v: {voltage}}}
+  script: [{{at: 50s, what: sag, to_pct: 60, lasting: 300ms}}]
+"""
+
+REFERENCE = ["--reference-uncertainty", "0.2%", "--reference", "bench meter, certificate 12"]
+
+
+class Calibration(Programs):
+    def plant(self, begin, voltage=220, scale=1.01):
+        self.site_file = self.path / "plant.yaml"
+        self.site_file.write_text(CALIBRATED.format(logbook=self.logbook, begin=begin, voltage=voltage, scale=scale))
+        done = self.run_program(TRAMLINED, self.site_file)
+        self.assertEqual(done.returncode, 0, done.stderr)
+        return done
+
+    def calibrate(self, *arguments, status=0):
+        done = self.run_program(TRAMLINE, "calibrate", self.site_file, *arguments)
+        self.assertEqual(done.returncode, status, done.stdout + done.stderr)
+        return done
+
+    def shown(self, begin):
+        """The input's mean 3-s value of the minute from `begin`, of what is not flagged."""
+        ((volts,),) = self.rows(f"SELECT avg(u_rms_v) FROM aggregate WHERE interval=0 AND side=0 AND flagged=0 AND NOT partial "
+                                f"AND begin_ns/1000000000-strftime('%s','{begin}') BETWEEN 0 AND 59")
+        return volts
+
+    def test_a_scale_that_is_wrong_by_one_percent_is_calibrated_right(self):
+        self.plant("2026-03-01T00:00:00Z")
+        self.assertAlmostEqual(self.shown("2026-03-01 00:00:00"), 222.2, delta=0.15)
+        at = [a for s in (10, 20, 30, 40) for a in ("--at", f"2026-03-01T00:00:{s}=220.0")]
+        done = self.calibrate("--channel", "input L1", *at, *REFERENCE, "--valid-for", "365d")
+        self.assertIn("Mains voltage kills", done.stdout)
+        self.assertIn("+1.0", done.stdout)  # as found
+        self.assertIn("reference, common to all readings", done.stdout)
+        self.assertIn("HUP", done.stdout)
+        self.plant("2026-03-02T00:00:00Z")
+        self.assertAlmostEqual(self.shown("2026-03-02 00:00:00"), 220.0, delta=0.02)
+        # Everything that follows from the samples is calibrated: the sag's residual voltage, the waveform.
+        residuals = [v for (v,) in self.rows("SELECT extreme_v FROM event WHERE side=0 AND kind=0 ORDER BY begin_ns")]
+        self.assertAlmostEqual(residuals[1] / residuals[0], 220.0 / self.shown("2026-03-01 00:00:00"), delta=0.002)
+        self.assertEqual(self.rows("SELECT session FROM calibration"), [(2,)])
+
+        # Once more, of a day with the calibration in force: it is undone and composed, so next to nothing changes.
+        first = json.loads(self.calibrate("--show", "--json").stdout)["channels"][0]["gain"]
+        again = json.loads(self.calibrate("--channel", "input", "--at", "2026-03-02T00:00:30=220.0", *REFERENCE, "--dry-run", "--json").stdout)
+        self.assertAlmostEqual(again["calibration"]["gain"], first, delta=2e-4)
+        # And of the day before it was made: whatever was in force then is taken out.
+        old = json.loads(self.calibrate("--channel", "input", "--at", "2026-03-01T00:00:30=220.0", *REFERENCE, "--dry-run", "--json").stdout)
+        self.assertAlmostEqual(old["calibration"]["gain"], first, delta=2e-4)
+        self.assertFalse(old["written"])
+
+        verdict = self.run_program(TRAMLINE, "verdict", "--from", "2026-03-02T00:00", self.logbook).stdout
+        self.assertIn("input L1   calibrated 2026-03-01; 220 V is good for ±0.4", verdict)
+        self.assertIn("output L1  no calibration", verdict)
+        self.assertNotIn("changed within the period", verdict)
+        self.assertIn("changed within the period (2026-03-02", self.run_program(TRAMLINE, "verdict", self.logbook).stdout)
+        self.assertIn("No calibration: voltages rest", self.run_program(TRAMLINE, "verdict", "--to", "2026-03-01T12:00", self.logbook).stdout)
+        self.assertIn("from 2026-03-02", self.calibrate("--show", "--logbook", self.logbook).stdout)
+
+        # Taken away, it is told too.
+        (self.path / "plant.calibration.yaml").unlink()
+        self.plant("2026-03-03T00:00:00Z")
+        self.assertEqual(self.rows("SELECT session, text='' FROM calibration"), [(2, 0), (3, 1)])
+        self.assertAlmostEqual(self.shown("2026-03-03 00:00:00"), 222.2, delta=0.15)
+
+    def test_readings_typed_in_compose_and_other_channels_keep_their_entries(self):
+        self.plant("2026-03-01T00:00:00Z")
+        self.calibrate("--channel", "input", "--reading", "222.2=220.0", "--reading", "202.0=200.0", "--dc-reading", "-0.3=0",
+                       "--resolution", "0.1", *REFERENCE, "--note", "at the \"main\" board")
+        kept = self.path / "plant.calibration.yaml"
+        self.assertIn('note: "at the \\"main\\" board"', kept.read_text())
+        # What the daemon measured last does not know the file yet: its display must not be taken for calibrated.
+        refused = self.calibrate("--channel", "input", "--reading", "222.2=220.0", *REFERENCE, status=2)
+        self.assertIn("read the site file again (HUP)", refused.stderr)
+        # Another channel's display is what it was.
+        self.calibrate("--channel", "output", "--reading", "220.0=221.0", *REFERENCE)
+        text = kept.read_text()
+        self.assertEqual(text.count("- side:"), 2)
+        self.assertIn("certificate 12", text)
+        self.plant("2026-03-02T00:00:00Z")
+        self.assertAlmostEqual(self.shown("2026-03-02 00:00:00"), 220.0, delta=0.15)
+        done = self.calibrate("--channel", "input", "--reading", "220.0=219.0", *REFERENCE)
+        self.assertIn("Replaced", done.stdout)
+        channels = json.loads(self.calibrate("--show", "--json").stdout)["channels"]
+        self.assertAlmostEqual(channels[0]["gain"], 219.0 / 222.2, delta=1e-4)
+        self.assertAlmostEqual(channels[0]["offset_v"], 0.3, delta=1e-4)  # only a d.c. reading changes it
+        self.assertAlmostEqual(channels[1]["gain"], 221.0 / 220.0, delta=1e-6)
+
+    def test_a_calibration_that_is_past_due_is_told_by_daemon_tool_and_verdict(self):
+        self.plant("2026-03-01T00:00:00Z")
+        self.calibrate("--channel", "output", "--at", "2026-03-01T00:00:30=220", *REFERENCE, "--due", "2026-03-02T00:00")
+        done = self.plant("2026-03-03T00:00:00Z")
+        self.assertIn("the calibration of output L1 of 2026-03-01 was due again on 2026-03-02", done.stderr)
+        self.assertIn("PAST DUE since 2026-03-02", self.calibrate("--show", status=1).stdout)
+        verdict = json.loads(self.run_program(TRAMLINE, "verdict", "--json", "--from", "2026-03-03T00:00", self.logbook).stdout)
+        self.assertTrue(verdict["calibration"]["in_force"][0]["past_due"])
+
+    def test_what_makes_no_calibration_is_refused_and_nothing_written(self):
+        self.plant("2026-03-01T00:00:00Z")
+        good = ["--channel", "input", "--reading", "222=220", *REFERENCE]
+        for arguments, words in (
+            ([], "Mains voltage kills"),
+            (["--channel", "inputt", *good[2:]], "its channels are: input L1, output L1"),
+            (["--channel", "input", "--reading", "110=220", *REFERENCE], "scale in the site file is probably wrong"),
+            (["--channel", "input", "--reading", "222", *REFERENCE], "LOGGER=REFERENCE"),
+            (["--channel", "input", "--reading", "222=220", "--reference", "x"], "uncertainty is not given"),
+            ([*good[:4], "--reference-uncertainty", "30%", "--reference", "x"], "up to 20 %"),
+            ([*good[:4], "--reference-uncertainty", "1V"], "the reference is not named"),
+            ([*good, "--reference-date", "2150-01-01T00:00"], "in the future"),
+            ([*good, "--due", "2020-01-01T00:00"], "not after the calibration"),
+            ([*good, "--temperature-coefficient", "50"], "one is given without the other"),
+            ([*good, "--reference-k", "0.2"], "coverage factor"),
+            (["--channel", "input", "--at", "2026-03-01T00:00:50=220", *REFERENCE], "sag, swell or interruption"),
+            (["--channel", "input", "--at", "2026-03-01T12:00:00=220", *REFERENCE], "no 3-s value"),
+            (["--channel", "input", "--at", "yesterday=220", *REFERENCE], "--at"),
+            (["--channel", "input", "--dc-reading", "1=0", *REFERENCE], "no a.c. reading"),
+        ):
+            with self.subTest(arguments):
+                self.assertIn(words, self.calibrate(*arguments, status=2).stderr)
+        self.assertFalse((self.path / "plant.calibration.yaml").exists())
+        self.calibrate(*good, "--dry-run")
+        self.assertFalse((self.path / "plant.calibration.yaml").exists())
+
+    def test_a_voltage_that_moves_is_not_compared(self):
+        self.plant("2026-03-01T00:00:00Z")
+        text = self.site_file.read_text().replace("script: [", "script: [{at: 20s, what: level, to_v: 230, ramp: 20s, lasting: 5s}, ").replace("2026-03-01", "2026-03-05")
+        self.site_file.write_text(text)
+        self.run_program(TRAMLINED, self.site_file)
+        done = self.calibrate("--channel", "input", "--at", "2026-03-05T00:00:30=225", *REFERENCE, status=2)
+        self.assertIn("the voltage moved", done.stderr)
+
+    def test_a_fault_of_the_calibration_file_keeps_the_daemon_from_starting(self):
+        self.plant("2026-03-01T00:00:00Z")
+        file = self.path / "plant.calibration.yaml"
+        file.write_text("calibrations:\n  - side: input\n    gayn: 1\n")
+        done = self.run_program(TRAMLINED, "--check", self.site_file)
+        self.assertEqual(done.returncode, 2)
+        self.assertIn("plant.calibration.yaml:3:5: calibrations[1].gayn is not a key here; did you mean gain?", done.stderr)
+
+
 class TheTool(Programs):
     def setUp(self):
         super().setUp()

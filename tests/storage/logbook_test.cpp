@@ -183,8 +183,9 @@ TEST_F(Logbook, EveryOtherKindOfRecordComesBackAsWell) {
   interval.travel = 0.25;
   write(to, {interval, Correction{Phase::l1, {64}, {10}, {20}, 1.0, 1.17, 20.0},
              Frequency{{0}, {10 * kSecond}, 49.98, 499, false, true, {}},
-             ClockChange{{7}, "the clock was set", -3, {ClockTrust::synchronised, 5}}, Loss{{8}, "aggregates dropped", 4},
-             SettingsInForce{{0}, "site: {}"}, CoverageProgress{{60 * kSecond}, 60 * kSecond}});
+             ClockChange{{7}, "the clock was set", -3, {ClockTrust::synchronised, 5}},
+             Loss{{8}, "aggregates dropped", 4}, SettingsInForce{{0}, "site: {}"},
+             CoverageProgress{{60 * kSecond}, 60 * kSecond}});
   Waveform waveform;
   waveform.begin = {100};
   waveform.end = {200};
@@ -292,13 +293,14 @@ TEST_F(Logbook, TheImportOfAnOldRecordingDoesNotUndoTheCalibrationOfTheDaemonsTi
   EXPECT_EQ(reader().calibration(UtcNs{60 * kSecond}).value(), "");
 }
 
-TEST_F(Logbook, ALogbookOfVersion1IsReadAsItIsAndBroughtForwardByItsWriter) {
+TEST_F(Logbook, ALogbookWithoutCalibrationsIsReadAsItIsAndBroughtForwardByItsWriter) {
   {
     auto opened = Database::open(path_, Database::Mode::read_write_create);
     ASSERT_TRUE(opened);
     ASSERT_TRUE(opened.value().execute("PRAGMA application_id=" + std::to_string(kApplicationId)));
-    ASSERT_TRUE(migrate(opened.value(), migrations().first(1)));
-    ASSERT_TRUE(opened.value().execute("INSERT INTO session VALUES(1,'old','a source',6400,1,0,'stopped')"));
+    ASSERT_TRUE(migrate(opened.value(), migrations().first(2)));
+    ASSERT_TRUE(
+        opened.value().execute("INSERT INTO session VALUES(1,'old','a source',6400,1,0,'stopped',0)"));
   }
   EXPECT_EQ(reader().calibration(std::nullopt).value(), "");
   EXPECT_TRUE(reader().calibrations().value().empty());

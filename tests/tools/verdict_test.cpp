@@ -157,5 +157,79 @@ TEST(Verdict, TheJsonHoldsTheSameFiguresInUtcAndSeconds) {
   EXPECT_EQ(json["coverage"]["measured_s"], 86400.0);
 }
 
+config::ChannelCalibration output_calibration(double expanded_pct) {
+  config::ChannelCalibration c;
+  c.channel = {Side::output, Phase::l1};
+  c.expanded_pct = expanded_pct;
+  c.due = UtcNs{12 * kHourNs};
+  return c;
+}
+
+TEST(Verdict, WithoutACalibrationItSaysThatTheUncertaintyIsNotStated) {
+  Evidence evidence = quiet_day();
+  evidence.events = {excursion(Origin::supply, 100, 20, 225.5)};
+  evidence.calibrations = {{UtcNs{0}, {}}};
+  const auto figures = verdict_figures(evidence);
+  const std::string text = verdict_text(evidence, figures);
+  EXPECT_THAT(text,
+              HasSubstr("No calibration: voltages rest on the site file's scale alone, their uncertainty is "
+                        "not stated."));
+  EXPECT_THAT(text, Not(HasSubstr("Against the band's")));
+  const auto json = nlohmann::json::parse(verdict_json(evidence, figures));
+  EXPECT_TRUE(json["excursions"]["longest"]["allowing_for_uncertainty"].is_null());
+  EXPECT_EQ(json["calibration"]["not_calibrated"].size(), 2U);
+}
+
+TEST(Verdict, TheLongestAndTheWorstExcursionAreWeighedAgainstTheUncertainty) {
+  Evidence evidence = quiet_day();
+  evidence.events = {excursion(Origin::supply, 100, 20, 225.5), excursion(Origin::regulator, 1000, 5, 207.0)};
+  evidence.calibrations = {{UtcNs{0}, {{output_calibration(1.0)}, "text"}}};
+  const auto figures = verdict_figures(evidence);
+  ASSERT_TRUE(figures.longest_weighed && figures.worst_weighed);
+  EXPECT_EQ(figures.longest_weighed->allowance, Allowance::undecided);  // 225.5 ± 2.3 V against 225 V
+  EXPECT_EQ(figures.worst_weighed->allowance, Allowance::outside);      // 207.0 ± 2.1 V against 215 V
+  EXPECT_EQ(figures.worst_weighed->which, Limit::lower);
+  const std::string text = verdict_text(evidence, figures);
+  EXPECT_THAT(text, HasSubstr("upper edge, 225.0 V, and good for ±2.3 V: cannot be decided"));
+  EXPECT_THAT(text, HasSubstr("lower edge, 215.0 V, and good for ±2.1 V: outside, even allowing"));
+  EXPECT_THAT(
+      text, HasSubstr("output L1  calibrated 1970-01-01; 220 V is good for ±2.2 V (k = 2, about 95 %); PAST "
+                      "DUE since 1970-01-01"));
+  EXPECT_THAT(text, HasSubstr("input L1   no calibration"));
+  EXPECT_THAT(text, Not(HasSubstr("changed within the period")));
+  const auto json = nlohmann::json::parse(verdict_json(evidence, figures));
+  EXPECT_EQ(json["excursions"]["longest"]["allowing_for_uncertainty"]["answer"], "undecided");
+  EXPECT_EQ(json["excursions"]["worst"]["allowing_for_uncertainty"]["answer"], "outside");
+  EXPECT_EQ(json["excursions"]["worst"]["allowing_for_uncertainty"]["limit_v"], 215.0);
+  EXPECT_EQ(json["calibration"]["in_force"][0]["past_due"], true);
+  EXPECT_EQ(json["calibration"]["not_calibrated"], nlohmann::json::array({"input L1"}));
+}
+
+TEST(Verdict, AnExtremeThatIsOnlyABoundIsNeverCalledInside) {
+  Evidence evidence = quiet_day();
+  evidence.events = {excursion(Origin::supply, 100, 20, 222.0)};
+  evidence.events[0].extreme_is_bound = true;
+  evidence.calibrations = {{UtcNs{0}, {{output_calibration(0.5)}, "text"}}};
+  EXPECT_EQ(verdict_figures(evidence).longest_weighed->allowance, Allowance::undecided);
+  evidence.events[0].extreme_is_bound = false;
+  EXPECT_EQ(verdict_figures(evidence).longest_weighed->allowance, Allowance::inside);
+}
+
+TEST(Verdict, ACalibrationThatChangedWithinThePeriodIsSaidAndEachEventHasItsOwn) {
+  Evidence evidence = quiet_day();
+  evidence.events = {excursion(Origin::supply, 100, 20, 226.0)};
+  evidence.calibrations = {{UtcNs{0}, {{output_calibration(1.0)}, "a"}},
+                           {UtcNs{kHourNs}, {{output_calibration(0.1)}, "b"}}};
+  auto figures = verdict_figures(evidence);
+  EXPECT_EQ(figures.longest_weighed->allowance, Allowance::undecided);
+  EXPECT_THAT(verdict_text(evidence, figures),
+              HasSubstr("changed within the period (1970-01-01 06:30:00 +05:30)"));
+  EXPECT_EQ(nlohmann::json::parse(verdict_json(evidence, figures))["calibration"]["changed_at"][0],
+            "1970-01-01T01:00:00.000Z");
+  evidence.events = {excursion(Origin::supply, 4000, 20, 226.0)};
+  figures = verdict_figures(evidence);
+  EXPECT_EQ(figures.longest_weighed->allowance, Allowance::outside);
+}
+
 }  // namespace
 }  // namespace tramline::tools
