@@ -28,9 +28,7 @@ std::string seconds_text(double seconds) {
 class PolledMeter : public Device {
  public:
   PolledMeter(const config::PolledMeterSettings& settings, std::vector<config::ChannelSettings> channels)
-      : settings_(settings),
-        channels_(std::move(channels)),
-        every_ns_(std::llround(settings.every_s * 1e9)) {
+      : settings_(settings), channels_(std::move(channels)), every_ns_(std::llround(settings.every_s * 1e9)) {
     assert(every_ns_ > 0);
   }
 

@@ -273,7 +273,7 @@ class Sound : public Device {
   [[nodiscard]] Error gone(int error) const {
     if (error == -ENODEV || error == -EIO || error == -EBADFD)
       return {what_, "the sound interface is gone", "see that it is plugged in and powered"};
-    return {what_, std::string("cannot be read: ") + snd_strerror(error), "plug it out and in again"};
+    return {what_, std::string("cannot be read: ") + snd_strerror(error), "unplug it and plug it in again"};
   }
 
   [[nodiscard]] Error cannot_do(const std::string& what, int error) const {
