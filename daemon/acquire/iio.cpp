@@ -188,6 +188,15 @@ class Converter : public Device {
   Status start() {
     block_ = settings_.block_frames != 0 ? static_cast<std::size_t>(settings_.block_frames)
                                          : frames_in(kBlockS, info_.rate_hz, kLeastBlock);
+    const auto packed = iio_device_get_sample_size(device_);
+    if (packed <= 0)
+      return iio_trouble(place_, "the length of its scans cannot be known", static_cast<int>(-packed));
+    for (const Column& column : columns_)
+      longest_ = std::max(longest_, column.element.bytes());
+    if (stamps_) longest_ = std::max(longest_, stamps_->element.bytes());
+    // So that a transfer, which libiio counts in packed scans, holds whole ones.
+    const std::size_t step = scan_bytes(static_cast<std::size_t>(packed), longest_);
+    if (step != static_cast<std::size_t>(packed)) block_ = scan_bytes(block_, step);
     const std::size_t transfers = std::max(
         kFewestTransfers,
         static_cast<std::size_t>(std::ceil(kKernelHoldsS * info_.rate_hz / static_cast<double>(block_))));
