@@ -18,6 +18,7 @@ void add_verdict(CLI::App& app, ExitStatus& status);
 void add_events(CLI::App& app, ExitStatus& status);
 void add_wave(CLI::App& app, ExitStatus& status);
 void add_import(CLI::App& app, ExitStatus& status);
+void add_new_site(CLI::App& app, ExitStatus& status);
 void add_calibrate(CLI::App& app, ExitStatus& status);
 
 }  // namespace tramline::tools

@@ -20,6 +20,7 @@ int main(int argc, char** argv) {
   add_events(app, status);
   add_wave(app, status);
   add_import(app, status);
+  add_new_site(app, status);
   add_calibrate(app, status);
   try {
     app.parse(argc, argv);

@@ -392,6 +392,91 @@ class Calibration(Programs):
         self.assertIn("plant.calibration.yaml:3:5: calibrations[1].gayn is not a key here; did you mean gain?", done.stderr)
 
 
+class NewSite(Programs):
+    FLAGS = ["--name", "Fernhollow 12", "--zone", "Asia/Kolkata", "--nominal-v", "230", "--frequency-hz", "50", "--source", "simulator"]
+    REGULATOR = ["--band-pct", "3", "--input-v", "170", "270"]
+
+    def new_site(self, *arguments, name="new.yaml"):
+        return subprocess.run([TRAMLINE, "new-site", str(self.path / name), *arguments], stdin=subprocess.DEVNULL, capture_output=True,
+                              text=True, timeout=60, check=False)
+
+    def test_flags_alone_make_a_site_that_passes_check_and_probe(self):
+        done = self.new_site(*self.FLAGS, *self.REGULATOR)
+        self.assertEqual(done.returncode, 0, done.stderr)
+        self.assertIn("mains voltage kills", done.stdout)
+        self.assertEqual(self.run_program(TRAMLINED, "--check", self.path / "new.yaml").returncode, 0)
+        probed = self.run_program(TRAMLINED, "--probe", "--seconds", "1", self.path / "new.yaml")
+        self.assertEqual(probed.returncode, 0, probed.stdout + probed.stderr)
+
+    def test_where_nobody_can_be_asked_it_says_which_flags_are_missing(self):
+        done = self.new_site("--name", "X", "--source", "tcp")
+        self.assertEqual(done.returncode, 2)
+        for flag in ("--nominal-v", "--frequency-hz", "--no-regulator", "--host", "--port"):
+            self.assertIn(flag, done.stderr)
+        self.assertNotIn("--name is", done.stderr)
+        self.assertEqual(list(self.path.iterdir()), [])
+
+    def test_what_the_site_file_would_not_allow_is_refused_and_not_written(self):
+        for wrong in (["--zone", "Nowhere/Atall"], ["--input-v", "270", "170"]):
+            done = self.new_site(*self.FLAGS, *self.REGULATOR[:2], *(wrong if wrong[0] == "--input-v" else [*self.REGULATOR[2:], *wrong]))
+            self.assertEqual(done.returncode, 2, wrong)
+            self.assertEqual(list(self.path.iterdir()), [])
+
+    def test_a_file_that_is_there_stays_unless_forced(self):
+        file = self.path / "new.yaml"
+        file.write_text("mine")
+        done = self.new_site(*self.FLAGS, "--no-regulator")
+        self.assertEqual(done.returncode, 2)
+        self.assertIn("--force", done.stderr)
+        self.assertEqual(file.read_text(), "mine")
+        self.assertEqual(self.new_site(*self.FLAGS, "--no-regulator", "--force").returncode, 0)
+        self.assertIn("Fernhollow", file.read_text())
+        self.assertEqual([p.name for p in self.path.iterdir()], ["new.yaml"])
+
+    def test_a_folder_that_is_not_there_ends_it_with_3(self):
+        done = self.new_site(*self.FLAGS, "--no-regulator", name="no/new.yaml")
+        self.assertEqual(done.returncode, 3, done.stderr)
+
+    def answered(self, *answers, arguments=()):
+        """Runs it on a terminal of its own; each answer is given once its question stands there."""
+        import pty
+        import select
+        ours, theirs = pty.openpty()
+        process = subprocess.Popen([TRAMLINE, "new-site", str(self.path / "new.yaml"), *arguments], stdin=theirs, stdout=theirs, stderr=theirs)
+        self.addCleanup(process.kill)
+        os.close(theirs)
+        shown = ""
+        for question, answer in answers:
+            while question not in shown:
+                self.assertTrue(select.select([ours], [], [], 60)[0], f"never asked {question!r}, but: {shown}")
+                shown += os.read(ours, 4096).decode()
+            shown = shown[shown.index(question) + len(question):]
+            os.write(ours, (answer + "\n").encode())
+        try:
+            while data := os.read(ours, 4096).decode():
+                shown += data
+        except OSError:  # the other end is closed
+            pass
+        os.close(ours)
+        return process.wait(60), shown
+
+    def test_questions_on_a_terminal_make_the_same_site(self):
+        devices = self.path / "devices"
+        (devices / "dev").mkdir(parents=True)
+        (devices / "dev" / "ttyACM7").touch()
+        status, shown = self.answered(
+            ("Name of the site: ", "Fernhollow 12"), ("Time zone [", "Nowhere"), ("Time zone [", "Asia/Kolkata"),
+            ("Which [1]: ", "1"), ("three-phase [y/N]: ", ""), ("Where sensors are", ""),
+            ("regulator [Y/n]: ", ""), ("output voltage, phase to neutral [230]: ", ""), ("percent [3]: ", "2.5"),
+            ("from its plate: ", "170"), ("from its plate: ", "170 270"), ("[not known]: ", "25"),
+            ("found here: /dev/ttyACM7", ""), arguments=["--devices-under", str(devices), "--logbook", "x.logbook"])
+        self.assertEqual(status, 0, shown)
+        asked = (self.path / "new.yaml").read_text()
+        (self.path / "new.yaml").unlink()
+        self.new_site(*self.FLAGS, "--band-pct", "2.5", "--input-v", "170", "270", "--speed-v-per-s", "25", "--logbook", "x.logbook")
+        self.assertEqual((self.path / "new.yaml").read_text(), asked)
+
+
 class TheTool(Programs):
     def setUp(self):
         super().setUp()

@@ -202,9 +202,7 @@ std::vector<Installation> single_phase() {
        {supply(203.0), supply(153.0)},
        {"must: sides swapped: input, output"}},
 
-      {"both sensors on one side",
-       {supply(), supply()},
-       {"look: same signal: input, output"}},
+      {"both sensors on one side", {supply(), supply()}, {"look: same signal: input, output"}},
       {"ratio of 1, in band", {supply(230.0), supply(230.0)}, {"look: same signal: input, output"}},
       {"one signal twice",
        {changed(supply(230.0), [](Signal& s) { s.noise_v = 0.0; }),
