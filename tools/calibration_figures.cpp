@@ -79,7 +79,6 @@ class Computation {
   double largest_residual_v_ = 0.0;
   std::optional<LineFit> line_;     ///< of a test of linearity that could be made
   std::optional<double> line_u_v_;  ///< r.m.s. only: type A, at nominal or at the worst of the readings
-  double repeatability_ = 0.0;      ///< relative, of the gain
   std::size_t degrees_of_freedom_ = 0;
 };
 
@@ -185,6 +184,12 @@ void Computation::look_at_linearity() {
       "largest "
       "residual, {:.2f} V.",
       line_->intercept, line_->u_intercept, largest_residual_v_));
+  const bool offset_known = std::any_of(ask_.readings.begin(), ask_.readings.end(),
+                                        [](const SensorReading& r) { return r.reading.kind == Kind::dc; });
+  if (!offset_known && !ask_.rms_only && line_->intercept < 0.0)
+    remark(
+        "An offset that no d.c. reading has told would look the same; short the sensor's input and give "
+        "one.");
 }
 
 void Computation::line_of_rms() {
@@ -216,11 +221,9 @@ void Computation::fill_budget(const Offset& offset) {
   const double nominal_v = ask_.nominal_v;
   double sum_x = 0.0;
   double sum_xx = 0.0;
-  double mean_reference = 0.0;
   for (const FitPoint& p : ac_.points) {
     sum_x += p.x;
     sum_xx += square(p.x);
-    mean_reference += p.y / static_cast<double>(ac_.points.size());
   }
   // What the same number of volts at every reading does to the gain, as part of it.
   const auto of_common_volts = [&](double volts) { return volts * sum_x / sum_xx / proportion_.slope; };

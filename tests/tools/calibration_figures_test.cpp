@@ -166,6 +166,15 @@ TEST(CalibrationFigures, ASensorThatIsNotLinearIsCalledSoAndItsUncertaintyWidene
   EXPECT_GT(f.expanded_v, 0.0);
 }
 
+TEST(CalibrationFigures, AnOffsetThatLooksLikeABendIsNamedAsAPossibleCause) {
+  std::vector<SensorReading> readings;
+  for (const double v : {150.0, 200.0, 230.0, 260.0})
+    readings.push_back(reading(kAc, std::hypot(v, 25.0), v));
+  EXPECT_THAT(remarks(figures(comparison(readings))), HasSubstr("would look the same"));
+  readings.push_back(reading(kDc, 25.0, 0.0));
+  EXPECT_TRUE(figures(comparison(readings)).linear);
+}
+
 TEST(CalibrationFigures, AnInterceptWithinTwiceItsUncertaintyIsNoBend) {
   const auto f = figures(comparison({reading(kAc, 160.2, 160.0), reading(kAc, 199.7, 200.0),
                                      reading(kAc, 230.3, 230.0), reading(kAc, 259.8, 260.0)}));
