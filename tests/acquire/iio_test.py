@@ -121,6 +121,7 @@ class Converter:
         self.lose, self.late, self.pace, self.end, self.stamp_every = dict(lose), dict(late), pace, end, stamp_every
         self.seen = {}  # at the last start of the buffer
         self.starts = 0
+        self.frames = 0  # since then
         self.folder = DEVICES / "iio:device0"
         shutil.rmtree(self.folder, ignore_errors=True)
         for name in ("scan_elements", "buffer"):
@@ -194,7 +195,7 @@ class Converter:
 
     def scan(self):
         begun = time.monotonic()
-        frames = 0
+        self.frames = 0
         scans = self.scans()
         while not self.over.is_set() and self.read("buffer/enable") == "1":
             piece = list(itertools.islice(scans, 64))  # whole: a FIFO takes up to 4096 bytes at once or not at all
@@ -209,9 +210,9 @@ class Converter:
                             data = data[os.write(self.fifo, data):]
                         except BlockingIOError:
                             time.sleep(0.001)
-            frames += len(piece)
+            self.frames += len(piece)
             if self.pace:
-                time.sleep(max(0.0, begun + frames / self.pace - time.monotonic()))
+                time.sleep(max(0.0, begun + self.frames / self.pace - time.monotonic()))
 
 
 # ---- the tests ----------------------------------------------------------------------------------------------------
@@ -403,6 +404,18 @@ class Losses(Case):
         self.converter(["le:s16/16>>0"] * 2, [sine(10_000), sine(20_000)], scale=1000, lose={3: 5, 1000: 2})
         taken = self.take_all(self.site())
         self.assertEqual([(g["at"], g["missing"]) for g in taken["gaps"]], [(3, 5), (1005, 2)])
+
+    def test_a_loss_behind_what_the_kernel_held_while_nobody_fetched_is_an_overrun(self):
+        converter = self.converter(["le:s16/16>>0"] * 2, [sine(10_000), sine(20_000)], scale=1000, lose={9000: 50}, pace=RATE_HZ)
+        program = subprocess.Popen([TAKE_LIVE, str(self.site()), "10000"], stdout=subprocess.PIPE, text=True)
+        while converter.frames < RATE_HZ and program.poll() is None:
+            time.sleep(0.01)
+        program.send_signal(signal.SIGSTOP)
+        time.sleep(1.5)  # the kernel's buffer holds a second
+        program.send_signal(signal.SIGCONT)
+        taken = json.loads(program.communicate(timeout=60)[0])
+        self.assertEqual(taken["gaps"], [{"at": 9000, "missing": 50, "overrun": True}])
+        self.assertEqual(taken["lost_frames"], 0)
 
     def test_late_stamps_are_no_loss(self):
         period = 1_000_000_000 // RATE_HZ
