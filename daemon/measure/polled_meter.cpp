@@ -106,14 +106,14 @@ void PolledMeter::add(const Block& block, UtcNs at, MeterOutput& out) {
     ten_minutes_->number = number;
     ten_minutes_->channels.resize(channels_.size());
   }
-  Sum& sum = *ten_minutes_;
+  ReadingSum& sum = *ten_minutes_;
   const std::int64_t length_ns = every_ms_ * kNsPerMillisecond;
   sum.measured_ns += length_ns;
   ++sum.readings;
   ++sum.inputs;
   for (std::size_t c = 0; c < channels_.size(); ++c) {
     const double volts = block.channel(c).front();
-    Sum::OfChannel& of = sum.channels[c];
+    ReadingSum::OfChannel& of = sum.channels[c];
     of.squares += volts * volts;
     of.low_v = std::fmin(of.low_v, volts);
     of.high_v = std::fmax(of.high_v, volts);
@@ -127,7 +127,7 @@ void PolledMeter::add(const Block& block, UtcNs at, MeterOutput& out) {
 
 void PolledMeter::end_ten_minutes(MeterOutput& out) {
   if (!ten_minutes_) return;
-  const Sum ended = *std::exchange(ten_minutes_, std::nullopt);
+  const ReadingSum ended = *std::exchange(ten_minutes_, std::nullopt);
   give_out(ended, storage::Interval::ten_minutes, kTenMinutesNs, out);
   const std::int64_t number = interval_of({ended.number * kTenMinutesNs}, kTwoHoursNs);
   if (two_hours_ && two_hours_->number != number) end_two_hours(out);
@@ -136,13 +136,13 @@ void PolledMeter::end_ten_minutes(MeterOutput& out) {
     two_hours_->number = number;
     two_hours_->channels.resize(channels_.size());
   }
-  Sum& sum = *two_hours_;
+  ReadingSum& sum = *two_hours_;
   ++sum.inputs;
   sum.readings += ended.readings;
   sum.measured_ns += ended.measured_ns;
   for (std::size_t c = 0; c < channels_.size(); ++c) {
-    const Sum::OfChannel& from = ended.channels[c];
-    Sum::OfChannel& of = sum.channels[c];
+    const ReadingSum::OfChannel& from = ended.channels[c];
+    ReadingSum::OfChannel& of = sum.channels[c];
     of.squares += from.squares / ended.inputs;
     of.low_v = std::fmin(of.low_v, from.low_v);
     of.high_v = std::fmax(of.high_v, from.high_v);
@@ -158,10 +158,10 @@ void PolledMeter::end_two_hours(MeterOutput& out) {
   two_hours_.reset();
 }
 
-void PolledMeter::give_out(const Sum& sum, storage::Interval interval, std::int64_t length_ns,
+void PolledMeter::give_out(const ReadingSum& sum, storage::Interval interval, std::int64_t length_ns,
                            MeterOutput& out) const {
   for (std::size_t c = 0; c < channels_.size(); ++c) {
-    const Sum::OfChannel& of = sum.channels[c];
+    const ReadingSum::OfChannel& of = sum.channels[c];
     storage::Aggregate aggregate;
     aggregate.interval = interval;
     aggregate.channel = channels_[c];

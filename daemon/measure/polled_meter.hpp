@@ -17,6 +17,22 @@
 
 namespace tramline::measure {
 
+/// Ten minutes or two hours of all channels, being filled.
+struct ReadingSum {
+  std::int64_t number = 0;  ///< of the interval since 1970
+  std::int32_t readings = 0;
+  std::int32_t inputs = 0;
+  std::int64_t measured_ns = 0;
+  struct OfChannel {
+    double squares = 0.0;
+    double low_v = storage::kNotMeasured;
+    double high_v = storage::kNotMeasured;
+    bool flagged = false;
+    bool over_range = false;
+  };
+  std::vector<OfChannel> channels;
+};
+
 /// What Meter is for samples, for a transducer that is asked for its r.m.s. values: readings in, records out.
 ///
 /// A reading stands in the place of a half-cycle value, from its own instant until the next one. So nothing
@@ -35,27 +51,13 @@ class PolledMeter {
   void clock_state(const storage::ClockState& state) { clock_state_ = state; }
 
  private:
-  /// Ten minutes or two hours of all channels, being filled.
-  struct Sum {
-    std::int64_t number = 0;  ///< of the interval since 1970
-    std::int32_t readings = 0;
-    std::int32_t inputs = 0;
-    std::int64_t measured_ns = 0;
-    struct OfChannel {
-      double squares = 0.0;
-      double low_v = storage::kNotMeasured;
-      double high_v = storage::kNotMeasured;
-      bool flagged = false;
-      bool over_range = false;
-    };
-    std::vector<OfChannel> channels;
-  };
   void end_stretch(storage::EventEnd reason, const std::string& why, MeterOutput& out);
   void note_events(std::size_t from, MeterOutput& out);
   void add(const Block& block, UtcNs at, MeterOutput& out);
   void end_ten_minutes(MeterOutput& out);
   void end_two_hours(MeterOutput& out);
-  void give_out(const Sum& sum, storage::Interval interval, std::int64_t length_ns, MeterOutput& out) const;
+  void give_out(const ReadingSum& sum, storage::Interval interval, std::int64_t length_ns,
+                MeterOutput& out) const;
 
   std::vector<Channel> channels_;
   std::int64_t every_ms_;
@@ -69,8 +71,8 @@ class PolledMeter {
   std::int64_t stretch_begin_ns_ = 0;  // in sample time
   SampleIndex last_;                   // reading
   std::int64_t next_progress_ms_ = 0;
-  std::optional<Sum> ten_minutes_;
-  std::optional<Sum> two_hours_;
+  std::optional<ReadingSum> ten_minutes_;
+  std::optional<ReadingSum> two_hours_;
 };
 
 }  // namespace tramline::measure
